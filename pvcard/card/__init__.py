@@ -1,0 +1,1 @@
+"""Cards of one turn: the ideal card, valve losses, capacity and efficiencies."""
