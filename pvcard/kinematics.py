@@ -123,6 +123,39 @@ def travel_by_ratio(
     return travel, slope
 
 
+def crank_angle_at(travel: Floats, ratio: Floats | float, rod_sign: Floats | float) -> Floats:
+    """Crank angle at which a fraction of the stroke has been travelled, on the way out.
+
+    Parameters
+    ----------
+    travel : (cards,)
+        Fraction of the stroke from the end's own dead centre; clipped to 0 and 1. [-]
+    ratio, rod_sign : () or (cards,)
+        As in `motion`. [-]
+
+    Returns
+    -------
+    crank_angle : (cards,)
+        Between 0 and 180; on the way back it is 360 less this. [deg]
+
+    Notes
+    -----
+    Law of cosines in the triangle of crank, rod and distance between crankshaft and crosshead pin:
+    the inverse of `motion`, exact.
+
+    Examples
+    --------
+    >>> crank_angle_at(np.array([0.5505102572]), 0.2, HEAD_END).round(6)
+    array([90.])
+    """
+    position = np.clip(travel, 0.0, 1.0)
+    from_head = np.where(np.asarray(rod_sign) > 0, position, 1 - position)
+    distance = 1 + 1 / ratio - 2 * from_head  # in crank radii
+    cosine = rod_sign * (1 + np.square(distance) - np.square(1 / ratio)) / (2 * distance)
+    result: Floats = np.degrees(np.arccos(np.clip(cosine, -1.0, 1.0)))
+    return result
+
+
 def acceleration(
     crank_angle_deg: Floats, crank_radius: Floats | float, rod_length: Floats | float, speed: float
 ) -> Floats:

@@ -1,21 +1,22 @@
 """Simulated recordings: the cylinder model, a measuring chain, and the truth beside them.
 
 A `Situation` says how a declared machine really is on one day: its leaks, true clearances, walls,
-sensors and encoder. `simulate_recording` computes what would be recorded; `pvcard.simulate_export`
+sensors and encoder. `simulate_recordings` computes what would be recorded; `pvcard.simulate_export`
 writes it.
 """
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, field, replace
 from datetime import datetime
 from typing import Any
 
 import numpy as np
 
-from pvcard.cycle import Cycles, Cylinders, Leak, Leaks, Pulsation, steady_state
+from pvcard.cycle import Cycles, Cylinders, Leaks, Pulsation, steady_state
 from pvcard.cycle.declared import declared_cylinder
+from pvcard.cycle.description import stacked
 from pvcard.errors import InputError
 from pvcard.gas import Gas, gas_for
 from pvcard.machine import Machine
@@ -97,21 +98,28 @@ def _changed(described: Cylinders, way: CylinderSituation) -> Cylinders:
     return described
 
 
-def _twice(leak: Leak) -> Leak:
-    """A leak and, as a second card, none."""
+def _twice(leaks: Leaks) -> Leaks:
+    """Leaks and, as a second card, none."""
 
-    def pair(size: Any) -> Floats:
+    def pair(size: Any, *, by_end: bool) -> Floats:
         once = np.asarray(size, dtype=np.float64)
-        first = once[:1] if once.ndim == 2 else np.atleast_1d(once)[:1]
-        return np.concatenate([first, np.zeros_like(first)])
+        once = once.reshape(1, -1) if by_end else once.reshape(1)
+        return np.concatenate([once, np.zeros_like(once)])
 
-    return Leak(pair(leak.orifice), pair(leak.slot), pair(leak.labyrinth), leak.throttlings)
+    paths = {}
+    for path in ("suction", "discharge", "rings", "packing"):
+        leak, by_end = getattr(leaks, path), path in ("suction", "discharge")
+        paths[path] = replace(
+            leak,
+            orifice=pair(leak.orifice, by_end=by_end),
+            slot=pair(leak.slot, by_end=by_end),
+            labyrinth=pair(leak.labyrinth, by_end=by_end),
+        )
+    return Leaks(**paths)
 
 
-def _cycles(
-    machine: Machine, cylinder: Cylinder, gas: Gas, situation: Situation, step: float
-) -> tuple[Cycles, Cylinders]:
-    """Periodic cycle of a cylinder as it is (first card) and without its leaks (second card)."""
+def _described(machine: Machine, cylinder: Cylinder, gas: Gas, situation: Situation) -> Cylinders:
+    """Two cards of a cylinder: as it is, and without its leaks."""
     way = situation.cylinders[cylinder.name]
     described = declared_cylinder(
         machine,
@@ -128,12 +136,61 @@ def _cycles(
         pulsation=way.pulsation,
     ).cylinders
     described = _changed(described, way)
-    leaks = Leaks(
-        *(_twice(getattr(way.leaks, path)) for path in ("suction", "discharge", "rings", "packing"))
-    )
     ripple = np.array([situation.speed_ripple]) if situation.speed_ripple else None
-    described = replace(described, leaks=leaks, speed_ripple=ripple)
-    return steady_state(described, gas, step=step), described
+    return replace(described, leaks=_twice(way.leaks), speed_ripple=ripple)
+
+
+@dataclass(frozen=True)
+class _Job:
+    """One cylinder of one recording, described and in time computed."""
+
+    recording: int
+    cylinder: Cylinder
+    gas: Gas
+    described: Cylinders
+
+
+def _jobs(machine: Machine, situations: Sequence[Situation]) -> list[_Job]:
+    jobs = []
+    for number, situation in enumerate(situations):
+        _check_names(machine, situation)
+        for cylinder in machine.cylinders:
+            way = situation.cylinders[cylinder.name]
+            gas = gas_for(
+                machine.gas_of(cylinder),
+                suction=(way.suction_pressure, way.suction_temperature),
+                discharge_pressure=way.discharge_pressure,
+            )
+            described = _described(machine, cylinder, gas, situation)
+            jobs.append(_Job(number, cylinder, gas, described))
+    return jobs
+
+
+def _check_names(machine: Machine, situation: Situation) -> None:
+    names = sorted(cylinder.name for cylinder in machine.cylinders)
+    if names != sorted(situation.cylinders):
+        raise InputError(
+            "the situation does not name the cylinders of the machine",
+            file=machine.source or None,
+            found=", ".join(sorted(situation.cylinders)),
+            expected=", ".join(names),
+        )
+
+
+def _computed(jobs: Sequence[_Job], step: float) -> list[Cycles]:
+    """Cycles of all jobs, those of one kind and one gas in one batch."""
+    groups: dict[tuple[Any, ...], list[int]] = {}
+    for number, job in enumerate(jobs):
+        described = job.described
+        kind = (id(job.gas), described.ends, described.wall.law)
+        groups.setdefault(kind, []).append(number)
+    cycles: dict[int, Cycles] = {}
+    for numbers in groups.values():
+        batch = stacked([jobs[number].described for number in numbers])
+        found = steady_state(batch, jobs[numbers[0]].gas, step=step)
+        for place, number in enumerate(numbers):
+            cycles[number] = found.take(slice(2 * place, 2 * place + 2))
+    return [cycles[number] for number in range(len(jobs))]
 
 
 def _sensor(way: CylinderSituation, end: int) -> Sensor:
@@ -198,59 +255,58 @@ def _line_readings(
     }
 
 
-def simulate_recording(
-    machine: Machine,
-    situation: Situation,
-    *,
-    rng: np.random.Generator | int = 0,
-    step: float = 0.25,
-) -> Simulated:
-    """Compute what would be recorded from a machine in a given situation.
+def simulate_recordings(
+    machine: Machine, situations: Sequence[Situation], *, seed: int = 0, step: float = 0.25
+) -> list[Simulated]:
+    """Compute what would be recorded from a machine in some situations.
 
     Parameters
     ----------
     machine : Machine
         As declared; valves it does not describe are assumed (see `declared_cylinder`).
-    situation : Situation
-    rng : np.random.Generator or seed
+    situations : Situation, one a recording
+    seed : ()
+        Of the noise; recording i takes the pair (seed, i), so that it does not depend on the
+        others.
     step : ()
         Of the cylinder model. [deg]
 
     Returns
     -------
-    Simulated
+    list of Simulated
         Rows in SI and the truth in the terms of the reported quantities.
 
     Notes
     -----
-    Every cylinder is computed twice in one batch, with and without its leaks, since leaks are
-    stated against the gas delivered without them. Turns differ by a common factor on all pressures
-    (line wander), which is exact for a perfect gas at unchanged temperature.
+    Every cylinder is computed with and without its leaks, since leaks are stated against the gas
+    delivered without them. Turns differ by a common factor on all pressures (line wander), which
+    is exact for a perfect gas at unchanged temperature.
     """
-    generator = np.random.default_rng(rng)
-    missing = {cylinder.name for cylinder in machine.cylinders} - set(situation.cylinders)
-    if missing:
-        raise InputError(
-            "the situation leaves out cylinders of the machine",
-            file=machine.source or None,
-            found=", ".join(sorted(situation.cylinders)),
-            expected=", ".join(sorted(cylinder.name for cylinder in machine.cylinders)),
-        )
+    jobs = _jobs(machine, situations)
+    cycles = _computed(jobs, step)
+    results = []
+    for number, situation in enumerate(situations):
+        own = [(job, found) for job, found in zip(jobs, cycles) if job.recording == number]
+        results.append(_recorded(machine, situation, own, np.random.default_rng((seed, number))))
+    return results
+
+
+def _recorded(
+    machine: Machine,
+    situation: Situation,
+    computed: Sequence[tuple[_Job, Cycles]],
+    generator: np.random.Generator,
+) -> Simulated:
+    """Send the computed cycles of one recording through the measuring chain."""
     rows = _rows(situation)
     turns = int(rows.turn.max() - rows.turn.min()) + 1
     wander = 1 + generator.normal(0, 1, turns) * situation.wander
     pressure: dict[tuple[str, str], Floats] = {}
     truths, lines = [], {}
-    for cylinder in machine.cylinders:
-        way = situation.cylinders[cylinder.name]
-        gas = gas_for(
-            machine.gas_of(cylinder),
-            suction=(way.suction_pressure, way.suction_temperature),
-            discharge_pressure=way.discharge_pressure,
-        )
-        cycles, described = _cycles(machine, cylinder, gas, situation, step)
+    for job, cycles in computed:
+        cylinder, way = job.cylinder, situation.cylinders[job.cylinder.name]
         sensors = [_sensor(way, end) for end in range(len(cycles.ends))]
-        truth = cylinder_truth(cylinder, cycles, described, gas, sensors)
+        truth = cylinder_truth(cylinder, cycles, job.described, job.gas, sensors)
         truths.append(truth)
         lines[cylinder.name] = _line_readings(way, truth, generator)
         for end, name in enumerate(cycles.ends):
@@ -265,7 +321,7 @@ def simulate_recording(
             part = (rows.shaft - cylinder.dead_centre) % 360 / 360
             reading = as_read(sampled, sensors[end], part, generator)
             if situation.averaged and situation.sampling_rate is None:
-                reading = _averaged(reading, turns)
+                reading = _averaged(reading, situation.turns)
             pressure[cylinder.name, name] = reading
     return _collected(machine, situation, rows, pressure, lines, truths)
 

@@ -78,7 +78,8 @@ def ideal(*, step: float = 0.5, **changes: Any) -> Cycles:
 def test_ideal_cycle_of_a_perfect_gas() -> None:
     ratio, clearance = np.array([1.5, 3.0, 6.0]), np.array([0.2, 0.12, 0.06])
     found = ideal(discharge_pressure=ratio * 10e5, clearance=clearance[:, None])
-    # LAW: theoretical card, work k/(k-1) ps Vs (1 + C - C r^(1/k)) (r^((k-1)/k) - 1), VE 1 - C (r^(1/k) - 1).
+    # LAW: theoretical card, work k/(k-1) ps Vs (1 + C - C r^(1/k)) (r^((k-1)/k) - 1), VE 1 - C
+    # (r^(1/k) - 1).
     efficiency = 1 - clearance * (ratio ** (1 / K) - 1)
     work = K / (K - 1) * 10e5 * 0.01 * efficiency * (ratio ** ((K - 1) / K) - 1)
     drawn = 10e5 * efficiency * 0.01 / (R * 300.0)
@@ -111,7 +112,8 @@ def test_ideal_cycle_of_a_real_gas(
     case = described(suction_pressure=suction, discharge_pressure=discharge)
     found = steady_state(case, gas, step=0.5, ideal_valves=True)
     path = gas.isentropic(np.array(suction), np.array(300.0), np.array(discharge))
-    # LAW: VE = 1 - C (rho_d / rho_s - 1), work = mass times isentropic enthalpy rise, gas of GERG-2008.
+    # LAW: VE = 1 - C (rho_d / rho_s - 1), work = mass times isentropic enthalpy rise, gas of
+    # GERG-2008.
     efficiency = 1 - 0.12 * (path.density2 / path.density1 - 1)
     mass = path.density1 * efficiency * 0.01
     assert_allclose(found.delivered, mass, rtol=1e-4)
@@ -145,7 +147,7 @@ def strokes_read_from(found: Cycles) -> tuple[float, float]:
         return float(room[first - 1] + slope * (line - trace[first - 1]))
 
     def left(part: slice, line: float, side: float) -> float:
-        """Volume of the last sample at line pressure; of the dead centre where a leak leaves none."""
+        """Volume of the last sample at line pressure, or of the dead centre."""
         at = np.flatnonzero(side * (pressure[part] - line) <= line * 1e-5)
         return float(volume[part][at[-1] if at.size else 0])
 
@@ -156,7 +158,8 @@ def strokes_read_from(found: Cycles) -> tuple[float, float]:
 
 @pytest.mark.parametrize(("path", "first"), [("suction", 1), ("discharge", 7)])
 def test_signature_of_a_valve_leak(path: str, first: int) -> None:
-    # SOURCE: rows LKS-01..12, an independent adiabatic integration at 0.02 deg from first principles.
+    # SOURCE: rows LKS-01..12, an independent adiabatic integration at 0.02 deg from first
+    # principles.
     sizes = np.array([[0.0], [5e-6]])
     both = ideal(ends=("head",), leaks=Leaks(**{path: Leak(orifice=sizes)}))
     healthy, leaking = both.take(slice(0, 1)), both.take(slice(1, 2))
@@ -306,7 +309,8 @@ def test_free_flight_against_the_guard() -> None:
     state, one = resting((1, 1)), plates()
     for _ in range(40):
         advance(state, one, np.array([[60e3]]), np.array([1e-4]))
-    # LAW: sqrt(2 F h / m) for 60 N over 2 mm and 0.05 kg [VLV-02]; steps that do not hit the impact.
+    # LAW: sqrt(2 F h / m) for 60 N over 2 mm and 0.05 kg [VLV-02]; steps that do not hit the
+    # impact.
     assert_allclose(state.guard_impact, ROWS["VLV-02"], rtol=1e-6)
     assert_allclose(state.position, 2e-3)  # LAW: restitution zero, it stays
 
@@ -357,7 +361,7 @@ def test_choked_discharge_of_a_vessel() -> None:
         still, mass, mass * (line.enthalpy - 30e5 / line.density), np.full((1, 1), volume)
     )
     shut = (np.zeros((1, 1)), np.zeros((1, 1)))
-    slow = engine.slow(0, gas, (np.array([1e5]), np.array([30e5])), shut[0])
+    slow = engine.slow(0, gas, (np.array([1e5]), np.array([30e5])), shut)
     for step in range(720):
         gas, slow, _ = engine.step(step, gas, slow, shut)
     # LAW: adiabatic choked discharge of a vessel, p / p0 = (1 + (k-1)/2 t / tau)^(-2k/(k-1)),
@@ -394,7 +398,14 @@ def test_batch_equals_one_by_one_and_leaves_its_input_alone() -> None:
     assert_array_equal(clearances, before[1])
 
 
-def test_stiffer_springs_close_earlier_and_harder_plates_hit_harder() -> None:
+def test_cards_far_apart_in_pressure_keep_their_order() -> None:
+    pressures = np.array([30e5, 1e5, 90e5])
+    found = ideal(step=1.0, suction_pressure=pressures, discharge_pressure=3 * pressures)
+    # LAW: the work of a perfect gas is in proportion to the suction pressure at equal ratio.
+    assert_allclose(found.work[:, 0] / pressures, found.work[0, 0] / 30e5, rtol=1e-4)
+
+
+def test_stiffer_springs_close_earlier() -> None:
     soft = replace(
         VALVES, spring_rate=np.array([[5e3], [4e4]]), spring_preload=np.array([[5.0], [60.0]])
     )

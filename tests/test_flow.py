@@ -20,7 +20,8 @@ def expected(name: str) -> float:
 
 
 def test_choked_nozzle_flow_of_a_textbook() -> None:
-    # SOURCE: Moran and Shapiro, Fundamentals of Engineering Thermodynamics, example 9.14(a) [LEK-01].
+    # SOURCE: Moran and Shapiro, Fundamentals of Engineering Thermodynamics, example 9.14(a)
+    # [LEK-01].
     density = 1e6 / (8314.5 / 28.97 * 360)
     found = flow.nozzle_flow(1e-3, 1e6, density, 5e5, 1.4)
     assert_allclose(found, expected("LEK-01"), atol=0.002)

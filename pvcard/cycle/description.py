@@ -342,3 +342,73 @@ def _check_valves(batch: Spread) -> None:
             _require(place, good, values, "more than zero" if name in positive else "zero or more")
         for name in ("seat_restitution", "guard_restitution"):
             _require(f"{side}.{name}", valves[name] < 1, valves[name], "0 up to below 1")
+
+
+def stacked(descriptions: Sequence[Cylinders]) -> Cylinders:
+    """Put several descriptions into one batch, in their order.
+
+    Parameters
+    ----------
+    descriptions : Cylinders, with the same ends and the same heat law
+        Either all or none with a given discharge temperature, ring back pressure.
+
+    Returns
+    -------
+    Cylinders
+        Cards of the first, then of the second, and so on.
+    """
+    parts = [spread(described) for described in descriptions]
+    first = parts[0].described
+    if any(
+        (part.described.ends, part.described.wall.law, set(part.cylinder))
+        != (first.ends, first.wall.law, set(parts[0].cylinder))
+        for part in parts
+    ):
+        raise CycleError("only cylinders of one kind can be computed in one batch")
+
+    def joined(groups: Sequence[dict[str, Floats]], *, ends: bool) -> dict[str, Any]:
+        values = {name: [group[name] for group in groups] for name in groups[0]}
+        return {
+            name: np.concatenate([value.T for value in value_list])
+            if ends
+            else np.concatenate(value_list)
+            for name, value_list in values.items()
+        }
+
+    leaks = {
+        path: Leak(
+            **joined([part.leaks[path] for part in parts], ends=path in ("suction", "discharge"))
+        )
+        for path in _PATHS
+    }
+    return Cylinders(
+        **joined([part.cylinder for part in parts], ends=False),
+        **joined([part.end for part in parts], ends=True),
+        suction_valves=ValveSide(**joined([part.suction for part in parts], ends=True)),
+        discharge_valves=ValveSide(**joined([part.discharge for part in parts], ends=True)),
+        ends=first.ends,
+        leaks=Leaks(**leaks),
+        wall=Wall(first.wall.law, **joined([part.wall for part in parts], ends=False)),
+        pulsation=Pulsation(
+            _joined_waves([part.described.pulsation.suction for part in parts], parts, ends=True),
+            _joined_waves([part.described.pulsation.discharge for part in parts], parts, ends=True),
+        ),
+        speed_ripple=_joined_waves(
+            [part.described.speed_ripple for part in parts], parts, ends=False
+        ),
+    )
+
+
+def _joined_waves(waves: Sequence[Any], parts: Sequence[Spread], *, ends: bool) -> Any:
+    """Amplitudes of all cards, zero where a description has none; None where none has any."""
+    orders = max((np.shape(wave)[-1] for wave in waves if wave is not None), default=0)
+    if orders == 0:
+        return None
+    blocks = []
+    for wave, part in zip(waves, parts):
+        shape = (part.cards, part.ends) if ends else (part.cards,)
+        block = np.zeros((*shape, orders), dtype=np.complex128)
+        if wave is not None:
+            block[..., : np.shape(wave)[-1]] = np.asarray(wave)
+        blocks.append(block)
+    return np.concatenate(blocks)

@@ -45,7 +45,7 @@ class Stream(NamedTuple):
 
 
 class Slow(NamedTuple):
-    """What is computed once a stage: leaks and wall heat."""
+    """What is computed once a stage: leaks, wall heat, the lesser of two open valves."""
 
     suction_leak: Stream
     discharge_leak: Stream
@@ -54,6 +54,7 @@ class Slow(NamedTuple):
     heat: Floats  # W into the gas
     mass: Floats  # kg/s, sum
     energy: Floats  # W, sum with heat
+    lesser: Stream | None  # of that valve of an end with both open which passes less
 
 
 class StepFlows(NamedTuple):
@@ -148,6 +149,10 @@ class GasStep:
         self.shape = (batch.ends, batch.cards)
         self.zero = np.zeros(self.shape)
         self.no_stream = Stream(self.zero, self.zero)
+        self.no = np.zeros(self.shape, dtype=bool)
+        self.yes = np.ones(self.shape, dtype=bool)
+        # What is open in the step at hand: sorted out once a step.
+        self.discharge_open = self.both_sides = self.all_shut = False
         self.leaks = batch.leaks
         self.present = {path: _present(leak) for path, leak in batch.leaks.items()}
         if "crank" not in batch.described.ends:
@@ -166,7 +171,7 @@ class GasStep:
 
     # -- slow parts ------------------------------------------------------------------------------
 
-    def _heat(self, step: int, gas: Contents, open_valves: Floats) -> Floats:
+    def _heat(self, step: int, gas: Contents, areas: tuple[Floats, Floats]) -> Floats:
         batch = self.setting.batch
         law, wall = batch.described.wall.law, batch.wall
         if law == "none":
@@ -183,7 +188,7 @@ class GasStep:
             reynolds = gas.density * np.square(size) * swirl / (2 * wall["viscosity"])
             coefficient = adair_nusselt(reynolds, wall["prandtl"]) * wall["conductivity"] / size
         else:
-            velocity = np.where(open_valves > 0, 6.18, 2.28) * self.piston_speed
+            velocity = np.where(areas[0] + areas[1] > 0, 6.18, 2.28) * self.piston_speed
             coefficient = woschni_coefficient(bore, gas.pressure, gas.temperature, velocity)
         difference = self.setting.wall_temperature - gas.temperature
         result: Floats = wall["multiplier"] * coefficient * surface * difference
@@ -215,9 +220,13 @@ class GasStep:
         return Stream(mass, energy)
 
     def slow(
-        self, step: int, gas: Contents, lines: tuple[Floats, Floats], open_valves: Floats
+        self,
+        step: int,
+        gas: Contents,
+        lines: tuple[Floats, Floats],
+        areas: tuple[Floats, Floats],
     ) -> Slow:
-        """Leaks and heat at a state; lines are the pressures of suction and discharge."""
+        """Leaks and heat at a state; pressures of, and valve areas to, suction and discharge."""
         inside = (gas.pressure, gas.density, gas.enthalpy)
         series = self.setting.leak_series
         streams = [self.no_stream] * 4
@@ -231,21 +240,58 @@ class GasStep:
             streams[2] = self._rings(gas)
         if self.present["packing"]:
             streams[3] = self._packing(gas)
-        heat = self._heat(step, gas, open_valves)
-        mass = sum((stream.mass for stream in streams), self.zero)
-        energy = sum((stream.energy for stream in streams), heat)
-        return Slow(streams[0], streams[1], streams[2], streams[3], heat, mass, energy)
+        heat = self._heat(step, gas, areas)
+        lesser = self._lesser(gas, lines, areas)
+        passing = [stream for stream in streams if stream is not self.no_stream]
+        if lesser is not None:
+            passing.append(lesser)
+        mass = sum((stream.mass for stream in passing), self.zero)
+        energy = sum((stream.energy for stream in passing), heat)
+        return Slow(streams[0], streams[1], streams[2], streams[3], heat, mass, energy, lesser)
+
+    def _lesser(
+        self, gas: Contents, lines: tuple[Floats, Floats], areas: tuple[Floats, Floats]
+    ) -> Stream | None:
+        """Stream of the smaller opening where both valves of an end are open at once."""
+        if self.ideal_valves or not ((areas[0] > 0) & (areas[1] > 0)).any():
+            return None
+        governing = self._governing(areas, gas.pressure, lines)
+        inside = (gas.pressure, gas.density, gas.enthalpy)
+        streams = []
+        for number, side in enumerate((self.setting.suction, self.setting.discharge)):
+            beyond = self.suction_gas if number == 0 else (self.line.density, self.line.enthalpy)
+            smaller = np.where(governing, number == 0, number == 1)
+            nothing = np.zeros_like(areas[number])
+            opening = {
+                "orifice": np.where(smaller, areas[number], 0.0),
+                "slot": nothing,
+                "labyrinth": nothing,
+            }
+            streams.append(
+                _leak(opening, inside, (lines[number] + self.zero, *beyond), side.series)
+            )
+        mass, energy = (sum(parts, self.zero) for parts in zip(*streams))
+        return Stream(mass, energy)
 
     # -- the valve that is open ------------------------------------------------------------------
+
+    def _governing(
+        self, areas: tuple[Floats, Floats], pressure: Floats, lines: tuple[Floats, Floats]
+    ) -> Booleans:
+        """Whether the discharge valve moves the pressure more strongly than the suction valve."""
+        above = areas[1] * np.sqrt(np.abs(pressure - lines[0]))
+        below = areas[0] * np.sqrt(np.abs(pressure - lines[1]))
+        result: Booleans = above > below
+        return result
 
     def _gap(
         self, areas: tuple[Floats, Floats], predicted: Floats, lines: tuple[Floats, Floats]
     ) -> tuple[Booleans, Floats]:
         """Which side's valve governs (true: discharge) and its area."""
         if not self.ideal_valves:
-            above = areas[1] * np.sqrt(np.abs(predicted - lines[0]))
-            below = areas[0] * np.sqrt(np.abs(predicted - lines[1]))
-            discharge = above > below
+            if not self.both_sides:
+                return (self.yes, areas[1]) if self.discharge_open else (self.no, areas[0])
+            discharge = self._governing(areas, predicted, lines)
             return discharge, np.where(discharge, areas[1], areas[0])
         discharge = (predicted > lines[1]) | ((predicted > lines[0]) & (areas[0] == 0))
         forward = np.where(discharge, predicted > lines[1], (predicted < lines[0]) | (areas[0] > 0))
@@ -289,35 +335,64 @@ class GasStep:
         gas, slow = guess
         lines, areas = surroundings
         volume, change = volumes
-        suction, discharge = self.setting.suction, self.setting.discharge
+        stream, side = self.no_stream, self.no
         for turn in range(_ROUNDS):
             working = gas.pressure
             if turn > 0:
-                slow = self.slow(step, gas, lines, areas[0] + areas[1])
+                slow = self.slow(step, gas, lines, areas)
             mass = base[0] + weight * slow.mass
             energy = base[1] + weight * slow.energy - working * change
-            stiffness = gas.pressure * gas.volume / (gas.energy * volume)
-            predicted = stiffness * energy
-            side, area = self._gap(areas, predicted, lines)
-            line = np.where(side, lines[1], lines[0])
-            difference = predicted - line
-            out = difference > 0
-            line_density = np.where(side, self.line.density, self.suction_gas[0])
-            line_enthalpy = np.where(side, self.line.enthalpy, self.suction_gas[1])
-            series = np.where(side, discharge.series[:, None], suction.series[:, None])
-            conductance = self._conductance(area, gas, (line, line_density), out, series)
-            enthalpy = np.where(out, gas.enthalpy, line_enthalpy)
-            # |d| + b sqrt|d| = |d0|: the pressure difference that remains when the flow it drives
-            # has passed.
-            damping = stiffness * weight * enthalpy * conductance
-            size = np.abs(difference)
-            root = 2 * size / (damping + np.sqrt(np.square(damping) + 4 * size) + 1e-300)
-            flow = np.where(out, -1.0, 1.0) * conductance * root
-            stream = Stream(flow, flow * enthalpy)
-            gas = gas_state(
-                self.setting, mass + weight * flow, energy + weight * stream.energy, volume
-            )
+            if not self.all_shut:
+                stream, side = self._valve(gas, energy, weight, volume, surroundings)
+                mass = mass + weight * stream.mass
+                energy = energy + weight * stream.energy
+            gas = gas_state(self.setting, mass, energy, volume)
         return gas, slow, stream, side, working
+
+    def _beyond(
+        self, side: Booleans, lines: tuple[Floats, Floats]
+    ) -> tuple[Floats, Floats, Floats, Floats]:
+        """Pressure, density, enthalpy and nozzle series of the line behind the governing valve."""
+        suction, discharge = self.setting.suction, self.setting.discharge
+        if side is self.no:
+            return (lines[0], *self.suction_gas, suction.series[:, None])
+        if side is self.yes:
+            return lines[1], self.line.density, self.line.enthalpy, discharge.series[:, None]
+        return (
+            np.where(side, lines[1], lines[0]),
+            np.where(side, self.line.density, self.suction_gas[0]),
+            np.where(side, self.line.enthalpy, self.suction_gas[1]),
+            np.where(side, discharge.series[:, None], suction.series[:, None]),
+        )
+
+    def _valve(
+        self,
+        gas: Contents,
+        energy: Floats,
+        weight: Floats,
+        volume: Floats,
+        surroundings: tuple[tuple[Floats, Floats], tuple[Floats, Floats]],
+    ) -> tuple[Stream, Booleans]:
+        """Flow through the governing valve of each end, at the end of the stage.
+
+        With ``d0`` the pressure difference that would be there without the flow, ``d`` that with
+        it: ``d = d0 - b sqrt(d)``, since flow goes with the root of ``d`` and takes pressure off in
+        proportion.
+        """
+        lines, areas = surroundings
+        stiffness = gas.pressure * gas.volume / (gas.energy * volume)
+        predicted = stiffness * energy
+        side, area = self._gap(areas, predicted, lines)
+        line, density, warmth, series = self._beyond(side, lines)
+        difference = predicted - line
+        out = difference > 0
+        conductance = self._conductance(area, gas, (line, density), out, series)
+        enthalpy = np.where(out, gas.enthalpy, warmth)
+        damping = stiffness * weight * enthalpy * conductance
+        size = np.abs(difference)
+        root = 2 * size / (damping + np.sqrt(np.square(damping) + 4 * size) + 1e-300)
+        flow = np.where(out, -conductance, conductance) * root
+        return Stream(flow, flow * enthalpy), side
 
     # -- one whole step --------------------------------------------------------------------------
 
@@ -326,6 +401,9 @@ class GasStep:
     ) -> tuple[Contents, Slow, StepFlows]:
         """Advance by one step with given valve areas, (ends, cards) each."""
         setting = self.setting
+        suction_open, self.discharge_open = bool(areas[0].any()), bool(areas[1].any())
+        self.both_sides = self.ideal_valves or (suction_open and self.discharge_open)
+        self.all_shut = not (self.ideal_valves or suction_open or self.discharge_open)
         weight = FIRST_STAGE * setting.duration[step]
         carry = (1 - FIRST_STAGE) / FIRST_STAGE
         first_change = setting.stage_volume[step] - setting.volume[step]
@@ -367,16 +445,25 @@ def _passed(
     """Add up what passed in the two stages."""
     total: list[Floats] = []
     for (_, slow, stream, side, working), weight, change in stages:
-        mass, energy = weight * stream.mass, weight * stream.energy
-        leaving = np.where(side & (mass < 0), 1.0, 0.0)
+        discharge = (stream.mass * side, stream.energy * side)
+        suction = (stream.mass - discharge[0], stream.energy - discharge[1])
         leak = slow.energy - slow.heat
+        if slow.lesser is not None:
+            other = (slow.lesser.mass * side, slow.lesser.energy * side)
+            suction = (suction[0] + other[0], suction[1] + other[1])
+            discharge = (
+                discharge[0] + slow.lesser.mass - other[0],
+                discharge[1] + slow.lesser.energy - other[1],
+            )
+            leak = leak - slow.lesser.energy
+        leaving = discharge[0] < 0
         part = [
-            np.where(side, 0.0, mass),
-            np.where(side, 0.0, energy),
-            np.where(side, mass, 0.0),
-            np.where(side, energy, 0.0),
-            -leaving * mass,
-            -leaving * energy,
+            weight * suction[0],
+            weight * suction[1],
+            weight * discharge[0],
+            weight * discharge[1],
+            -weight * (leaving * discharge[0]),
+            -weight * (leaving * discharge[1]),
             weight * slow.suction_leak.mass,
             weight * slow.discharge_leak.mass,
             weight * slow.rings.mass,

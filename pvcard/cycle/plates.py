@@ -100,9 +100,9 @@ def advance(state: PlateState, plates: Plates, opening_pressure: Floats, duratio
 
     Notes
     -----
-    ``m y'' + c y' + k y = dp A - preload`` [1]_, spring force at the place reached after half a
-    step, damping implicit: second order in the step. A plate on its seat stays until the force
-    exceeds zero and the stiction.
+    ``m y'' + c y' + k y = dp A - preload`` [1]_, by the implicit midpoint rule: second order
+    in the step, stable for any spring. A plate on its seat stays until the force exceeds zero and
+    the stiction.
 
     References
     ----------
@@ -110,12 +110,11 @@ def advance(state: PlateState, plates: Plates, opening_pressure: Floats, duratio
        Appl. Mech.* 17 (1950) 415 (from memory of the publication).
     """
     position, speed = state.position, state.speed
-    middle = position + 0.5 * duration * speed
     force = (
-        opening_pressure * plates.port_area - plates.spring_preload - plates.spring_rate * middle
+        opening_pressure * plates.port_area - plates.spring_preload - plates.spring_rate * position
     )
     held = (position <= 0) & (speed <= 0) & (force <= plates.stiction)
-    share = 0.5 * duration * plates.damping / plates.mass
+    share = 0.5 * duration * (plates.damping + 0.5 * duration * plates.spring_rate) / plates.mass
     later = (speed * (1 - share) + duration * force / plates.mass) / (1 + share)
     later = np.where(held, 0.0, later)
     start_speed = np.where(held, 0.0, speed)

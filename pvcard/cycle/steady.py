@@ -18,12 +18,15 @@ from pvcard.cycle.gas_step import StepFlows
 from pvcard.cycle.result import Cycles, joined
 from pvcard.cycle.setting import Side, prepare
 from pvcard.cycle.turning import Turner
+from pvcard.errors import GasError
 from pvcard.gas import Gas, check_gas_phase
 from pvcard.types import Booleans, Floats, Integers
 
 DEFAULT_STEP = 0.25  # deg
 _CHUNK = 400  # cards turned together: their arrays stay in the processor's cache
-_MOST_TURNS = 60
+_WIDEST_RANGE = 12.0  # of pressures that one fit of the gas serves
+_MOST_TURNS = 40
+_MIXED_TURNS = 16
 _LARGEST_CHANGE = 0.3  # of mass and energy by one mixing
 
 
@@ -62,7 +65,7 @@ def _settle(turner: Turner, tolerance: float) -> tuple[Integers, Booleans]:
     cards = turner.shape[1]
     turns = np.zeros(cards, dtype=np.int64)
     done: Booleans = np.zeros(cards, dtype=bool)
-    for _ in range(_MOST_TURNS):
+    for turn in range(_MOST_TURNS):
         start = turner.vector() / scale
         turner.turn()
         end = turner.vector() / scale
@@ -77,7 +80,11 @@ def _settle(turner: Turner, tolerance: float) -> tuple[Integers, Booleans]:
         done = change < tolerance
         if done.all():
             break
-        turner.set_vector(mixer.next(start, end) * scale)
+        # Settled cards just go on turning: mixing would only stir up rounding errors. So do those
+        # that have not settled for long, whose plates bounce differently at each small change.
+        mixed = mixer.next(start, end)
+        plain = done | (turn >= _MIXED_TURNS)
+        turner.set_vector(np.where(plain, end, mixed) * scale)
     return turns, done
 
 
@@ -106,7 +113,11 @@ def _result(turner: Turner, turns: Integers, converged: Booleans, start: Floats)
     suction, discharge = turner.plates
     if turner.fixed_line:
         out = flows.discharge_out.sum(axis=0)
-        enthalpy = flows.discharge_out_energy.sum(axis=0) / np.where(out > 0, out, np.nan)
+        ideal = setting.discharge.gas.enthalpy
+        some = out > 0
+        enthalpy = np.where(
+            some, flows.discharge_out_energy.sum(axis=0) / np.where(some, out, 1.0), ideal
+        )
         temperature = setting.fluid.state_of_enthalpy(setting.discharge.pressure, enthalpy)[1]
     else:
         temperature = turner.line_temperature
@@ -149,7 +160,7 @@ def _relative(lift: Floats, side: Side) -> Floats:
     return result
 
 
-def _part(batch: Spread, cards: slice) -> Spread:
+def _part(batch: Spread, cards: Integers) -> Spread:
     """Cards of a batch; waves, kept in the description, are cut as well."""
 
     def cut(group: dict[str, Floats]) -> dict[str, Floats]:
@@ -201,7 +212,10 @@ def fluid_for(described: Cylinders, gas: GasFace) -> Fluid:
     -----
     A suction state that is not a gas raises `GasError`.
     """
-    batch = spread(described)
+    return _fluid(spread(described), gas)
+
+
+def _fluid(batch: Spread, gas: GasFace) -> Fluid:
     suction = batch.cylinder["suction_pressure"]
     temperature = batch.cylinder["suction_temperature"]
     reach = Reach(
@@ -210,8 +224,36 @@ def fluid_for(described: Cylinders, gas: GasFace) -> Fluid:
         (float(temperature.min()), float(temperature.max())),
     )
     if isinstance(gas, Gas):
-        check_gas_phase(gas, reach.suction_pressure[1], reach.suction_temperature[0])
+        try:
+            check_gas_phase(gas, reach.suction_pressure[1], reach.suction_temperature[0])
+        except GasError:
+            # The worst pressure and the worst temperature need not belong to one card.
+            for one_pressure, one_temperature in zip(suction, temperature):
+                check_gas_phase(gas, float(one_pressure), float(one_temperature))
     return fit_fluid(gas, reach)
+
+
+def _chunks(batch: Spread, *, one_fluid: bool) -> list[Integers]:
+    """Cards to be turned together: not too many, and not too far apart in pressure."""
+    low, high = batch.cylinder["suction_pressure"], batch.cylinder["discharge_pressure"]
+    order: Integers = np.arange(batch.cards) if one_fluid else np.argsort(low, kind="stable")
+    chunks: list[list[int]] = []
+    top = 0.0
+    for card in order.tolist():
+        new_top = max(top, high[card])
+        if (
+            not chunks
+            or len(chunks[-1]) >= _CHUNK
+            or (
+                not one_fluid
+                and new_top > max(_WIDEST_RANGE, high[card] / low[card]) * low[chunks[-1][0]]
+            )
+        ):
+            chunks.append([])
+            new_top = high[card]
+        chunks[-1].append(card)
+        top = new_top
+    return [np.array(chunk) for chunk in chunks]
 
 
 def steady_state(
@@ -265,12 +307,14 @@ def steady_state(
             expected="a whole fraction of 360 deg, at most 2 deg",
         )
     batch = spread(described)
-    fluid = gas if isinstance(gas, Fluid) else fluid_for(described, gas)
+    given = gas if isinstance(gas, Fluid) else None
     parts = []
-    for first in range(0, batch.cards, _CHUNK):
-        chunk = _part(batch, slice(first, min(first + _CHUNK, batch.cards)))
+    chunks = _chunks(batch, one_fluid=given is not None)
+    for cards in chunks:
+        chunk = _part(batch, cards)
+        fluid = given or _fluid(chunk, gas)  # type: ignore[arg-type]
         turner = Turner(prepare(chunk, fluid, steps), ideal_valves=ideal_valves)
         start = turner.vector()
         turns, converged = _settle(turner, tolerance)
         parts.append(_result(turner, turns, converged, start))
-    return joined(parts)
+    return joined(parts).take(np.argsort(np.concatenate(chunks)))

@@ -10,6 +10,7 @@ from pvcard.cycle.result import Sums, Trace
 from pvcard.cycle.setting import Setting
 from pvcard.types import Floats
 
+_LEAST_DELIVERY = 0.005  # of the gas in the cylinder
 _HELD_FROM = 150.0  # deg of own angle from which a delayed suction valve is held
 
 
@@ -140,11 +141,13 @@ class Turner:
             self.setting.suction.pressure_at(0, 0.0),
             self.setting.discharge.pressure_at(0, 0.0),
         )
-        return self.gas_step.slow(0, gas, lines, areas[0] + areas[1])
+        return self.gas_step.slow(0, gas, lines, areas)
 
     def _mix_line(self) -> None:
         flows = StepFlows(*self.sums.net)
         out = flows.discharge_out.sum(axis=0)
         energy = flows.discharge_out_energy.sum(axis=0)
-        old = self.gas_step.line.enthalpy
-        self._set_line(np.where(out > 0, energy / np.where(out > 0, out, 1.0), old))
+        # A cylinder that delivers next to nothing leaves the line in its ideal state.
+        enough = out > _LEAST_DELIVERY * self.gas.mass.sum(axis=0)
+        ideal = self.setting.discharge.gas.enthalpy
+        self._set_line(np.where(enough, energy / np.where(enough, out, 1.0), ideal))

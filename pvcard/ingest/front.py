@@ -62,6 +62,31 @@ def read_export(
     return join_recordings(recordings)
 
 
+def machine_name_in(path: str | Path, *, columns: ColumnMap | None = None) -> str | None:
+    """Name of the machine that an export's metadata give, read before anything else of it.
+
+    Parameters
+    ----------
+    path : of the export
+    columns : the analyser's own names
+
+    Returns
+    -------
+    name : str or None
+        None where the export does not say.
+    """
+    column_map = columns or ColumnMap()
+    table = reader_for(Path(path)).open(
+        Path(path), column_map.layout, lambda names: recognised(names, column_map)
+    )
+    theirs = {own: key for key, own in column_map.metadata.items()}
+    for key in ("machine", theirs.get("machine", "machine")):
+        for name, entry in table.metadata.items():
+            if name.strip().lower() == key.strip().lower():
+                return entry.value.strip() or None
+    return None
+
+
 def _read_file(
     path: Path, machine: Machine, column_map: ColumnMap, progress: Progress | None
 ) -> Recording:

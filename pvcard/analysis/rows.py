@@ -1,0 +1,240 @@
+"""Measured columns of one end as a row: values, uncertainties, and a reason for each that is missing."""
+
+from __future__ import annotations
+
+from typing import Any
+
+import numpy as np
+
+from pvcard.analysis.batch import Job, Outcome
+from pvcard.analysis.end_traces import EndTrace
+from pvcard.card.measure import Measured
+from pvcard.quantities import CYLINDER_QUANTITIES, END_COLUMNS, QUANTITIES
+from pvcard.uncertainty import Estimate
+
+Row = dict[str, Any]
+
+_LATER = {
+    "leak": "this version of pvcard does not estimate leaks",
+    "late_deg": "this version of pvcard does not read how late valves close",
+    "flutter": "this version of pvcard does not read valve flutter",
+    "impact": "this version of pvcard does not compute plate speeds",
+}
+_RUNNING_GEAR = "this version of pvcard does not compute rod loads and torque"
+_FLAT = (
+    "the trace does not run from suction to discharge pressure and back: the end does not compress, or "
+    "a line pressure or unit is wrong"
+)
+# Columns that need both closed spans of the card.
+_CLOSED = (
+    "clearance_pct",
+    "compression_exponent",
+    "expansion_exponent",
+    "opening_deg",
+    "closing_deg",
+    "volumetric_efficiency_pct",
+    "flow",
+    "valve_loss",
+    "ideal_power",
+    "other_loss",
+    "isentropic_efficiency",
+)
+
+
+def end_row(job: Job, outcome: Outcome, load_step: str | None) -> Row:
+    """Row of one end.
+
+    Parameters
+    ----------
+    job, outcome
+        What was measured.
+    load_step : step found, or None
+
+    Returns
+    -------
+    dict
+        All columns of the contract with ``u_`` beside them, and ``reason``.
+    """
+    trace = job.trace
+    row = _identity(trace, load_step)
+    reasons: dict[str, str] = {}
+    measured = outcome.measured
+    for column in END_COLUMNS:
+        value, u = None, None
+        if measured is not None and outcome.input_uncertainty is not None:
+            value, u = _figure(measured, outcome, column)
+        elif column in ("suction_pressure_bar", "discharge_pressure_bar", "speed_rpm"):
+            value, u = _plain(trace, column)
+        put(row, column, value, u)
+        if value is None:
+            reasons[column] = _reason(column, trace, outcome)
+    if measured is not None:
+        _passage(row, reasons, trace, outcome, measured)
+        _standard_flow(row, reasons, job, outcome, measured)
+    row["reason"] = reasons
+    return row
+
+
+def open_row(cylinder: str, end: str, stage: int, load_step: str | None, reason: str) -> Row:
+    """Row of an end without figures.
+
+    Parameters
+    ----------
+    cylinder, end : names
+    stage : number
+    load_step : step found, or None
+    reason : why there are no figures
+
+    Returns
+    -------
+    dict
+    """
+    row: Row = {"cylinder": cylinder, "end": end, "stage": stage, "load_step": load_step}
+    for column in END_COLUMNS:
+        put(row, column, None, None)
+    row["reason"] = {column: reason for column in END_COLUMNS}
+    return row
+
+
+def put(row: Row, column: str, value: float | None, u: float | None) -> None:
+    """Set a column and its uncertainty; None for anything that is not a finite number.
+
+    Parameters
+    ----------
+    row : dict
+        Changed in place: rows are made here.
+    column : name
+    value, u : figure and standard uncertainty, or None
+    """
+    good = value is not None and np.isfinite(value)
+    row[column] = float(value) if good and value is not None else None
+    if column not in QUANTITIES or QUANTITIES[column].has_uncertainty:
+        row[f"u_{column}"] = float(u) if good and u is not None and np.isfinite(u) else None
+
+
+def _identity(trace: EndTrace, load_step: str | None) -> Row:
+    return {
+        "cylinder": trace.cylinder.name,
+        "end": trace.end,
+        "stage": trace.cylinder.stage,
+        "load_step": load_step,
+    }
+
+
+def _plain(trace: EndTrace, column: str) -> tuple[float, float]:
+    lines = trace.lines
+    if column == "speed_rpm":
+        return trace.speed * 60, trace.speed_uncertainty * trace.speed * 60
+    name = column.removesuffix("_bar")
+    return getattr(lines, name) / 1e5, getattr(lines, f"{name}_u") / 1e5
+
+
+def estimate_of(outcome: Outcome, column: str) -> Estimate | None:
+    """Estimate behind a column, one card long.
+
+    Parameters
+    ----------
+    outcome : Outcome
+    column : name
+
+    Returns
+    -------
+    Estimate or None
+        None where the column was not measured.
+    """
+    if outcome.measured is None or column not in outcome.measured.columns:
+        return None
+    whole = outcome.measured.columns[column]
+    return Estimate(whole.value[outcome.row : outcome.row + 1], whole.slopes[outcome.row : outcome.row + 1])
+
+
+def _figure(measured: Measured, outcome: Outcome, column: str) -> tuple[float | None, float | None]:
+    estimate = estimate_of(outcome, column)
+    if estimate is None or outcome.input_uncertainty is None:
+        return None, None
+    if not measured.closed[outcome.row] and any(part in column for part in _CLOSED):
+        return None, None
+    value = float(estimate.value[0])
+    if not np.isfinite(value):
+        return None, None
+    if not estimate.slopes.shape[1]:
+        return value, None
+    return value, float(estimate.uncertainty(outcome.input_uncertainty[None])[0])
+
+
+def _reason(column: str, trace: EndTrace, outcome: Outcome) -> str:
+    for part, text in _LATER.items():
+        if part in column:
+            return text
+    if outcome.problem:
+        return outcome.problem
+    if "passage" in column:
+        return "the export has no trace of this line"
+    if column in ("discharge_temperature_degC", "discharge_temperature_excess_K"):
+        return "the export gives no discharge temperature"
+    measured = outcome.measured
+    if measured is not None and not measured.case.windows.found[outcome.row]:
+        return _FLAT
+    if measured is not None and not measured.closed[outcome.row]:
+        return "the closed parts of the card lie outside the states for which the gas was computed"
+    if column.endswith(("opening_deg", "closing_deg")):
+        return "the trace shows no such event within reach of the closed parts"
+    if column.endswith("flow_area_cm2"):
+        return "the trace shows no loss in this valve from which an area could be told"
+    del trace
+    return "this recording does not determine it"
+
+
+def _passage(
+    row: Row, reasons: dict[str, str], trace: EndTrace, outcome: Outcome, measured: Measured
+) -> None:
+    """Losses against traces of the lines, where there are such."""
+    from pvcard.analysis.passages import passage_loss
+
+    for side, line in (("suction", trace.suction_line), ("discharge", trace.discharge_line)):
+        column = f"{side}_passage_loss_kW"
+        if line is None or not measured.closed[outcome.row]:
+            continue
+        value, u = passage_loss(outcome, side, line)
+        put(row, column, value, u)
+        if row[column] is not None:
+            reasons.pop(column, None)
+
+
+def _standard_flow(
+    row: Row, reasons: dict[str, str], job: Job, outcome: Outcome, measured: Measured
+) -> None:
+    flow = row["discharge_flow_kg_h"]
+    column = "standard_flow_m3_h"
+    if flow is None:
+        reasons[column] = reasons.get("discharge_flow_kg_h", _FLAT)
+        return
+    base = job.machine
+    gas = measured.case.cards.gas
+    density = float(gas.density(np.array(base.base_pressure), np.array(base.base_temperature)))
+    if not np.isfinite(density):
+        reasons[column] = "the gas is not a gas at the base state"
+        return
+    u = row["u_discharge_flow_kg_h"]
+    put(row, column, flow / density, None if u is None else u / density)
+    reasons.pop(column, None)
+    del outcome
+
+
+def cylinder_row(name: str) -> Row:
+    """Row of a cylinder's running gear, which is not computed yet.
+
+    Parameters
+    ----------
+    name : of the cylinder
+
+    Returns
+    -------
+    dict
+    """
+    row: Row = {"cylinder": name}
+    for column in CYLINDER_QUANTITIES:
+        row[column] = None
+        row[f"u_{column}"] = None
+    row["reason"] = {column: _RUNNING_GEAR for column in CYLINDER_QUANTITIES}
+    return row

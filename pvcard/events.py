@@ -1,0 +1,278 @@
+"""When the valves open and close, read from where the trace parts from the closed lines.
+
+The model of a closed span - real gas, wall heat, fitted clearance - is carried on beyond the span, sample by
+sample. While both valves are shut the trace follows it; where gas flows through a valve it departs. No fixed
+angle and no fixed share of the line pressures is used, so pulsation and springs do not mislead.
+
+At an opening the departure grows from nothing with a high power of the time; two levels of it point back
+to its start. At a closing, near a dead centre, level errors of the model are as large as the departure,
+so there its slope and bend are watched: a closed line leaves them near zero.
+"""
+
+from __future__ import annotations
+
+from typing import NamedTuple
+
+import numpy as np
+
+from pvcard.closed_lines import PLACE, Problem
+from pvcard.kinematics import motion
+from pvcard.line_fit import CORNERS, Fit
+from pvcard.types import Booleans, Floats, Integers
+from pvcard.uncertainty import Estimate, constant
+
+_RADIAN = np.pi / 180
+_STEP_DEG = 0.5  # spacing at which a departure is followed, or the grid's own if coarser
+_OPENING_REACH_DEG, _CLOSING_REACH_DEG = 40.0, 75.0
+_OPENING_LEVEL = 1e-3  # least departure in ln p that counts at an opening
+_LEVELS_APART = 8.0  # second level over first; a growth with the third power takes twice the time
+_CLOSING_SLOPE = 1.5e-4  # least slope of the departure in ln p per degree that counts at a closing
+_CLOSING_BEND = 1.5e-5  # least second derivative of it, per degree squared
+_SIGMAS = 6.0  # of white noise, below which nothing counts
+
+
+class Event(NamedTuple):
+    """An event of each card with what reading it is uncertain by."""
+
+    crank_angle: Floats  # (cards,) deg in [0, 360) from the own dead centre, NaN where not seen
+    uncertainty: Floats  # (cards,) deg, of the reading alone
+
+
+class Events(NamedTuple):
+    """Opening and closing of the valves of each end."""
+
+    suction_opening: Event
+    suction_closing: Event
+    discharge_opening: Event
+    discharge_closing: Event
+
+
+class _Departure(NamedTuple):
+    crank_angle: Floats  # (cards, steps) deg, starting at the corner
+    value: Floats  # (cards, steps), measured less modelled ln p
+    inside: Booleans  # (cards, steps)
+
+
+def valve_events(case: Problem, fit: Fit, white_noise: Floats) -> Events:
+    """Opening and closing angles of each card.
+
+    Parameters
+    ----------
+    case, fit
+        Of one batch.
+    white_noise : (cards,)
+        Standard deviation of single samples, relative to pressure. [-]
+
+    Returns
+    -------
+    Events
+        NaN where an event is not seen within reach of its span.
+    """
+    windows = case.windows
+    half = int(np.searchsorted(case.cards.crank_angle, 180.0))
+    last = len(case.cards.crank_angle) - 1
+    expansion_end = _departure(
+        case, fit, 3, windows.expansion_last, +1, _OPENING_REACH_DEG, (0, half)
+    )
+    compression_end = _departure(
+        case, fit, 1, windows.compression_last, +1, _OPENING_REACH_DEG, (half, last)
+    )
+    compression_start = _departure(
+        case, fit, 0, windows.compression_first, -1, _CLOSING_REACH_DEG, (half - half // 15, last)
+    )
+    expansion_start = _departure(
+        case, fit, 2, windows.expansion_first, -1, _CLOSING_REACH_DEG, (0, half)
+    )
+    return Events(
+        _opening(expansion_end, +1.0, white_noise),
+        _closing(compression_start, white_noise),
+        _opening(compression_end, -1.0, white_noise),
+        _closing(expansion_start, white_noise),
+    )
+
+
+def _departure(
+    case: Problem,
+    fit: Fit,
+    corner: int,
+    start: Integers,
+    direction: int,
+    reach: float,
+    limits: tuple[int, int],
+) -> _Departure:
+    """Follow the trace from the end of a span and compare it with the modelled line."""
+    cards = case.cards
+    grid = cards.crank_angle
+    spacing = 360 / len(grid)
+    stride = max(1, round(_STEP_DEG / spacing))
+    steps = max(4, int(reach / (spacing * stride)))
+    index = start[:, None] + direction * stride * np.arange(1, steps + 1)
+    inside = (index >= limits[0]) & (index <= limits[1])
+    index = np.clip(index, 0, len(grid) - 1)
+    node = CORNERS[corner]
+    angle = np.concatenate([case.crank_angle[:, node, None], grid[index]], axis=-1)
+    at_corner = case.ln_pressure[:, node] - fit.linear.residual[:, node]
+    with np.errstate(invalid="ignore", divide="ignore"):
+        shown = np.log(np.take_along_axis(cards.pressure, index, axis=-1))
+    measured = np.concatenate([at_corner[:, None], shown], axis=-1)
+    modelled = _extended(case, fit, corner, angle, measured)
+    return _Departure(angle[:, 1:], (measured - modelled)[:, 1:], inside)
+
+
+def _extended(
+    case: Problem, fit: Fit, corner: int, angle: Floats, measured: Floats
+) -> Floats:
+    """Modelled ln p along `angle`, from the corner in its first column."""
+    cards = case.cards
+    at = motion(angle, cards.rod_ratio[:, None], cards.rod_sign[:, None])
+    clear = fit.state[:, PLACE["clearance"], None] + at.travel
+    ln_volume = np.log(clear)
+    exponent = _exponent_along(fit, corner, measured)
+    fall = np.diff(ln_volume) * (exponent[:, 1:] + exponent[:, :-1]) / 2
+    heat = _heat_along(case, fit, corner, angle, ln_volume, measured)
+    gain = np.diff(angle) * _RADIAN * (heat[:, 1:] + heat[:, :-1]) / 2
+    result = np.empty_like(measured)
+    result[:, 0] = measured[:, 0]
+    result[:, 1:] = measured[:, :1] + np.cumsum(gain - fall, axis=-1)
+    return result
+
+
+def _exponent_along(fit: Fit, corner: int, ln_pressure: Floats) -> Floats:
+    """Exponent of the gas beyond a span: as at its end, with its trend over the span."""
+    ends = (0, 1) if corner < 2 else (2, 3)
+    own, other = CORNERS[corner], CORNERS[ends[1] if corner == ends[0] else ends[0]]
+    exponent = fit.linear.exponent
+    step = exponent[:, other] - exponent[:, own]
+    apart = fit.linear.ln_volume[:, own] - fit.linear.ln_volume[:, other]
+    trend = step / (apart * exponent[:, own])
+    result: Floats = exponent[:, own, None] + trend[:, None] * (ln_pressure - ln_pressure[:, :1])
+    return result
+
+
+def _heat_along(
+    case: Problem, fit: Fit, corner: int, angle: Floats, ln_volume: Floats, measured: Floats
+) -> Floats:
+    """Change of modelled ln p by heat per radian beyond a span, scaled from its end.
+
+    Notes
+    -----
+    Heat over stored energy goes with ``rho^0.7 (area) (T_wall - T) / (p V)``, temperature with the product
+    ``p V`` of the trapped mass.
+    """
+    cards, known = case.cards, case.references
+    node = CORNERS[corner]
+    state = fit.state
+    suction = cards.suction_temperature
+    start = suction + state[:, PLACE["warming"]]
+    if corner > 1:
+        start = start + state[:, PLACE["clearance_gas"]]
+    exponent = known.path.temperature_exponent
+    at_corner = case.ln_pressure[:, node] - np.log(cards.suction_pressure)
+    first = start * np.exp(at_corner * (exponent - 1) / exponent)
+    product = np.exp((measured - measured[:, :1]) + (ln_volume - ln_volume[:, :1]))
+    gas = first[:, None] * product
+    wall = suction + state[:, PLACE["wall"]] * (known.path.temperature - suction)
+    depth = (cards.bore * cards.stroke * np.pi / (2 * cards.piston_area))[:, None]
+    area = (1 + depth * np.exp(ln_volume)) / (1 + depth * np.exp(ln_volume[:, :1]))
+    density = np.exp(-0.7 * (ln_volume - ln_volume[:, :1]))
+    harmonic = 1 + state[:, PLACE["shape"], None] * np.cos(2 * _RADIAN * angle)
+    difference = (wall[:, None] - gas) * harmonic
+    slope = fit.linear.heat_slope[:, node, None]
+    own = difference[:, :1]
+    safe = np.where(np.abs(own) < 1.0, np.where(own < 0, -1.0, 1.0), own)
+    return slope / safe * difference * area * density / product
+
+
+def _first_true(mask: Booleans) -> tuple[Integers, Booleans]:
+    return np.argmax(mask, axis=-1), mask.any(-1)
+
+
+def _crossing(departure: _Departure, size: Floats, level: Floats) -> tuple[Floats, Booleans]:
+    """First angle at which `size` passes `level`, straight between samples."""
+    place, seen = _first_true((size > level[:, None]) & departure.inside)
+    row = np.arange(len(size))
+    before = np.maximum(place - 1, 0)
+    low, high = size[row, before], size[row, place]
+    rise = high - low
+    share = np.where(rise > 0, (level - low) / np.where(rise > 0, rise, 1.0), 1.0)
+    first, second = departure.crank_angle[row, before], departure.crank_angle[row, place]
+    angle = np.where(place > 0, first + np.clip(share, 0, 1) * (second - first), second)
+    return angle, seen
+
+
+def _opening(departure: _Departure, sign: float, white_noise: Floats) -> Event:
+    size = sign * departure.value
+    sustained = size.copy()
+    sustained[:, :-1] = np.minimum(size[:, :-1], size[:, 1:])  # one stray sample is not an opening
+    level = np.maximum(_OPENING_LEVEL, _SIGMAS * white_noise)
+    early, seen = _crossing(departure, sustained, level)
+    late, grown = _crossing(departure, sustained, _LEVELS_APART * level)
+    back = np.where(grown, np.clip(late - early, 0, 3.0), 0.5)
+    spacing = np.abs(departure.crank_angle[:, 2] - departure.crank_angle[:, 1])
+    angle = np.where(seen, early - back, np.nan)
+    return Event(angle, np.hypot(0.3 + 0.3 * back, spacing / 3))
+
+
+def _closing(departure: _Departure, white_noise: Floats) -> Event:
+    """Last angle before the span at which the departure still bends or runs away."""
+    spacing = np.abs(departure.crank_angle[:, 2] - departure.crank_angle[:, 1])
+    step = float(np.nanmedian(spacing))
+    reach = _half_width(float(np.nanmedian(white_noise)), step)
+    slope, bend = _local_parabola(departure.value, reach)
+    slope, bend = np.abs(slope) / step, np.abs(bend) / step**2
+    offsets = np.arange(-reach, reach + 1.0)
+    centred = offsets**2 - np.mean(offsets**2)
+    noise_slope = white_noise / np.sqrt(np.sum(offsets**2)) / step
+    noise_bend = 2 * white_noise / np.sqrt(np.sum(centred**2)) / step**2
+    slope_level = np.maximum(_CLOSING_SLOPE, _SIGMAS * noise_slope)
+    bend_level = np.maximum(_CLOSING_BEND, _SIGMAS * noise_bend)
+    size = np.maximum(slope / slope_level[:, None], bend / bend_level[:, None])
+    inside = departure.inside.copy()
+    inside[:, :reach] = False
+    angle, seen = _crossing(departure._replace(inside=inside), size, np.ones(len(size)))
+    blurred = np.where(seen, angle - reach * step, np.nan)
+    widened = bend_level / _CLOSING_BEND  # the level that noise asks for, over the least one
+    return Event(blurred, np.hypot(1.2, reach * step / 2) * np.sqrt(np.minimum(widened, 9.0)))
+
+
+def _half_width(white_noise: float, spacing: float) -> int:
+    """Half width, in steps, over which the departure is smoothed: wider where noise asks for it."""
+    wanted = np.sqrt(white_noise / _CLOSING_BEND) if np.isfinite(white_noise) else 0.0
+    return int(np.clip(round(wanted / spacing), 1, max(1, round(3.0 / spacing))))
+
+
+def _local_parabola(value: Floats, reach: int) -> tuple[Floats, Floats]:
+    """Slope and second derivative by step of a parabola through 2 reach + 1 running samples [1]_.
+
+    References
+    ----------
+    .. [1] A. Savitzky and M. J. E. Golay, *Analytical Chemistry* 36 (1964) 1627.
+    """
+    offsets = np.arange(-reach, reach + 1.0)
+    centred = offsets**2 - np.mean(offsets**2)
+    padded = np.pad(value, ((0, 0), (reach, reach)), mode="edge")
+    slope, bend = np.zeros_like(value), np.zeros_like(value)
+    for place, (first, second) in enumerate(zip(offsets, centred)):
+        part = padded[:, place : place + value.shape[1]]
+        slope += first * part
+        bend += second * part
+    return slope / np.sum(offsets**2), 2 * bend / np.sum(centred**2)
+
+
+def event_estimate(event: Event, name: str, inputs: int) -> Estimate:
+    """An event as an estimate: it moves with the mark and has a reading of its own.
+
+    Parameters
+    ----------
+    event : Event
+    name : name of the input that stands for its reading
+    inputs : number of inputs carried, 0 for none
+
+    Returns
+    -------
+    angle : (cards,)
+        In [0, 360). [deg]
+    """
+    angle = np.mod(event.crank_angle, 360.0)
+    estimate = constant(angle, inputs).depending_on("dead_centre", -1.0)
+    return estimate.depending_on(name, event.uncertainty)
