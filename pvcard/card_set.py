@@ -1,7 +1,7 @@
 """A batch of cards of one gas on one grid of crank angles: the unit of all computing.
 
-Angles are counted from each end's own dead centre of least volume, so that head and crank ends share one
-grid and one set of formulas.
+Angles are counted from each end's own dead centre of least volume, so that head and crank ends
+share one grid and one set of formulas.
 """
 
 from __future__ import annotations
@@ -13,13 +13,14 @@ import numpy as np
 
 from pvcard.gas import Gas
 from pvcard.gas_table import GasTable
-from pvcard.kinematics import Motion, motion_from_sine
+from pvcard.kinematics import Place, curvature_from_sine, place_from_sine
 from pvcard.types import Floats
 
 
 @dataclass(frozen=True, eq=False)
 class CardSet:
-    """Calibrated cards with what was declared and read beside them; SI, all but the grid (cards,)."""
+    """Calibrated cards with what was declared and read beside them; SI, all but the grid
+    (cards,)."""
 
     crank_angle: Floats  # (samples,) deg from the own dead centre, ascending in [0, 360)
     pressure: Floats  # (cards, samples) Pa absolute
@@ -56,7 +57,7 @@ class CardSet:
 class Turning(NamedTuple):
     """Motion of every card on the grid and the angle each sample stands for."""
 
-    motion: Motion  # each (cards, samples)
+    motion: Place  # each (cards, samples)
     sine: Floats  # (samples,)
     cosine: Floats  # (samples,)
     weight: Floats  # (samples,) rad
@@ -77,10 +78,28 @@ def turning(cards: CardSet) -> Turning:
     """
     angle = np.radians(cards.crank_angle)
     sine, cosine = np.sin(angle), np.cos(angle)
-    motion = motion_from_sine(
+    motion = place_from_sine(
         sine[None, :], cosine[None, :], cards.rod_ratio[:, None], cards.rod_sign[:, None]
     )
     return Turning(motion, sine, cosine, turn_weights(angle), _first_half(cards.crank_angle))
+
+
+def curvature(cards: CardSet, turn: Turning) -> Floats:
+    """Second derivative of the travel of each card at the samples.
+
+    Parameters
+    ----------
+    cards, turn
+        Of one batch.
+
+    Returns
+    -------
+    curvature : (cards, samples)
+        [1/rad2]
+    """
+    return curvature_from_sine(
+        turn.sine, turn.cosine, cards.rod_ratio[:, None], cards.rod_sign[:, None]
+    )
 
 
 def turn_weights(angle: Floats) -> Floats:

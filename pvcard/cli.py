@@ -1,7 +1,7 @@
 """The command line: parse, call the public front, print.
 
-Nothing heavy is imported before the words of the command are understood, so that ``--help`` answers at
-once.
+Nothing heavy is imported before the words of the command are understood, so that ``--help``
+answers at once.
 """
 
 from __future__ import annotations
@@ -54,7 +54,9 @@ def main(arguments: Sequence[str] | None = None) -> int:
         print("pvcard: stopped; nothing more was written", file=sys.stderr)
         return UNUSABLE
     except MemoryError:
-        print("pvcard: not enough memory for this input; try fewer exports at once", file=sys.stderr)
+        print(
+            "pvcard: not enough memory for this input; try fewer exports at once", file=sys.stderr
+        )
         return UNUSABLE
     return status
 
@@ -62,7 +64,8 @@ def main(arguments: Sequence[str] | None = None) -> int:
 def _parser() -> argparse.ArgumentParser:
     parser = argparse.ArgumentParser(
         prog="pvcard",
-        description="Measured cylinder pressure of reciprocating compressors, turned into decisions.",
+        description="Measured cylinder pressure of reciprocating compressors, "
+        "turned into decisions.",
         epilog=_EXAMPLES,
         formatter_class=argparse.RawDescriptionHelpFormatter,
     )
@@ -80,7 +83,9 @@ def _parser() -> argparse.ArgumentParser:
         default="table",
         help="form of the result (default: table)",
     )
-    analyse.add_argument("--output", metavar="PATH", help="file to write instead of standard output")
+    analyse.add_argument(
+        "--output", metavar="PATH", help="file to write instead of standard output"
+    )
     analyse.add_argument(
         "--fail-on",
         choices=(*_SEVERITIES, "never"),

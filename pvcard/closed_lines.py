@@ -1,18 +1,20 @@
 """Model of a card's closed spans: real gas, wall heat, clearance; residuals and their derivatives.
 
-With both valves shut the mass is constant and entropy changes only by heat [1]_. A trapped gas whose pressure
-is measured and whose volume is known up to the clearance therefore obeys, at every angle of a span,
+With both valves shut the mass is constant and entropy changes only by heat [1]_. A trapped gas
+whose pressure is measured and whose volume is known up to the clearance therefore obeys, at every
+angle of a span,
 
     s(p, m / V) = s(start) + integral of dQ / (m T),
 
-with the entropy of the real gas and dQ by Annand's coefficient [2]_ with free size, wall temperature and
-course. Divided by the slope of entropy with ``ln p`` the difference is a residual in ``ln p``. No polytropic
-exponent enters: fitting exponents together with the clearance is the wrong estimator, since wall heat
-then passes for clearance.
+with the entropy of the real gas and dQ by Annand's coefficient [2]_ with free size, wall
+temperature and course. Divided by the slope of entropy with ``ln p`` the difference is a residual
+in ``ln p``. No polytropic exponent enters: fitting exponents together with the clearance is the
+wrong estimator, since wall heat then passes for clearance.
 
 References
 ----------
-.. [1] First and second law for a closed system; e.g. M. J. Moran and H. N. Shapiro, *Fundamentals of
+.. [1] First and second law for a closed system; e.g. M. J. Moran and H. N. Shapiro, *Fundamentals
+of
    Engineering Thermodynamics*, chapter 6.
 .. [2] See `pvcard.heat.annand_nusselt`.
 """
@@ -26,7 +28,7 @@ import numpy as np
 from pvcard.card_set import CardSet, Turning
 from pvcard.gas_table import IsentropicSlopes, TableState
 from pvcard.heat import annand_nusselt
-from pvcard.kinematics import motion_from_sine, travel_by_ratio
+from pvcard.kinematics import Place, place_from_sine, travel_by_ratio
 from pvcard.types import Floats
 from pvcard.windows import NODES, Windows, span_means
 
@@ -68,6 +70,7 @@ class Problem(NamedTuple):
     sine: Floats  # (cards, 2 nodes), of the crank angle
     cosine: Floats
     crank_angle: Floats  # (cards, 2 nodes) deg
+    declared: Place  # (cards, 2 nodes), motion at the declared mark and rod
     ln_pressure: Floats  # (cards, 2 nodes)
     width: Floats  # (cards, 2) samples per node
 
@@ -120,8 +123,9 @@ def problem(cards: CardSet, turn: Turning, windows: Windows, known: References) 
 
     Notes
     -----
-    Before samples are averaged into nodes the trace is flattened with the mean exponent of the gas and
-    the declared clearance; what is left is nearly straight, so that averaging adds no curvature error.
+    Before samples are averaged into nodes the trace is flattened with the mean exponent of the gas
+    and the declared clearance; what is left is nearly straight, so that averaging adds no curvature
+    error.
     """
     exponent = known.path.volume_exponent[:, None]
     guess = start_clearance(cards)[:, None]
@@ -130,12 +134,10 @@ def problem(cards: CardSet, turn: Turning, windows: Windows, known: References) 
     bins = span_means(flat, cards.crank_angle, windows)
     angle = np.radians(bins.crank_angle)
     sine, cosine = np.sin(angle), np.cos(angle)
-    travel = motion_from_sine(
-        sine, cosine, cards.rod_ratio[:, None], cards.rod_sign[:, None]
-    ).travel
-    ln_pressure = bins.mean - exponent * np.log(guess + travel)
+    at = place_from_sine(sine, cosine, cards.rod_ratio[:, None], cards.rod_sign[:, None])
+    ln_pressure = bins.mean - exponent * np.log(guess + at.travel)
     return Problem(
-        cards, known, windows, sine, cosine, bins.crank_angle, ln_pressure, bins.width
+        cards, known, windows, sine, cosine, bins.crank_angle, at, ln_pressure, bins.width
     )
 
 
@@ -154,137 +156,157 @@ def start_clearance(cards: CardSet) -> Floats:
     return np.where(np.isfinite(cards.clearance), cards.clearance, 0.15)
 
 
-class _Wall(NamedTuple):
-    base: Floats  # (cards, 2 nodes) entropy by heat per radian and per kelvin of difference
-    difference: Floats  # (cards, 2 nodes) K, wall less gas
-    harmonic: Floats  # (cards, 2 nodes)
-    temperature: Floats  # (cards, 2 nodes) K, of the gas
+class _Gas(NamedTuple):
+    """State of the trapped gas at the nodes; each (cards, 2 nodes)."""
+
+    ln_density: Floats
+    start: Floats  # K, of the line followed to suction pressure
+    by_temperature: Floats  # (cards, 1), change of ln density by ln temperature
+    fall: Floats  # ln volume over that at the first node
+    exponent: Floats  # -(v/p) (dp/dv) at constant entropy
+    slope: Floats  # J/(kg K), change of entropy by ln p
+    rise: Floats  # ln p: entropy gained since the first node
 
 
-def _wall(
-    case: Problem, state: Floats, start: Floats, ln_p: Floats, ln_rho: Floats, clear: Floats
-) -> _Wall:
-    """Heat to the gas per radian, per unit multiplier and kelvin."""
+class _Heat(NamedTuple):
+    """Heat to the trapped gas at the nodes; each (cards, 2 nodes)."""
+
+    base: Floats  # change of ln p by heat, per radian and kelvin of difference, multiplier included
+    difference: Floats  # K, wall less gas
+    harmonic: Floats
+    shape: Floats  # 1 + shape times harmonic
+    temperature: Floats  # K, of the gas
+
+
+def _trapped_gas(case: Problem, state: Floats, ln_p: Floats, ln_volume: Floats) -> _Gas:
+    cards, known = case.cards, case.references
+    suction = cards.suction_temperature[:, None]
+    start = np.repeat(suction + state[:, PLACE["warming"], None], 2 * NODES, axis=-1)
+    start[:, EXPANSION] += state[:, PLACE["clearance_gas"], None]
+    by_temperature = known.suction.ln_density_by_temperature[:, None] * suction
+    ends = start[:, ::NODES] / suction
+    ln_line = np.log(known.suction.density)[:, None] + by_temperature * np.log(ends)
+    relative = ln_p[:, ::NODES] - np.log(cards.suction_pressure)[:, None]
+    ln_anchor = ln_line + relative / known.path.volume_exponent[:, None]
+    fall = _anchored(ln_volume)
+    ln_density = np.repeat(ln_anchor, NODES, axis=-1) - fall
+    gas = cards.table.entropy_from_density(ln_p, ln_density)
+    exponent = -gas.d_ln_rho / gas.d_ln_p
+    rise = _anchored(gas.entropy) / gas.d_ln_p
+    rise += exponent * state[:, PLACE["exponent"], None] * fall
+    return _Gas(ln_density, start, by_temperature, fall, exponent, gas.d_ln_p, rise)
+
+
+def _wall_heat(case: Problem, state: Floats, gas: _Gas, ln_p: Floats, clear: Floats) -> _Heat:
     cards, known = case.cards, case.references
     suction = cards.suction_temperature
     exponent = known.path.temperature_exponent[:, None]
     relative = ln_p - np.log(cards.suction_pressure)[:, None]
-    temperature = start * np.exp(relative * (exponent - 1) / exponent)
+    temperature = gas.start * np.exp(relative * ((exponent - 1) / exponent))
     span = known.path.temperature - suction
     wall = (suction + state[:, PLACE["wall"]] * span)[:, None]
-    area = 2 * cards.piston_area[:, None] + np.pi * (cards.bore * cards.stroke)[:, None] * clear
-    mass = np.exp(ln_rho) * cards.swept_volume[:, None] * clear
-    density = np.exp(0.7 * (ln_rho - np.log(known.suction.density)[:, None]))
-    rate = known.heat_rate[:, None] * density * area / (mass * temperature)
-    base = rate / (2 * np.pi * cards.speed[:, None])
-    return _Wall(base, wall - temperature, 2 * case.cosine**2 - 1, temperature)
+    # Annand's coefficient goes with rho^0.7, the mass with rho V: the rest goes with rho^-0.3.
+    # Area over swept volume is ends + sides times the volume over the swept volume.
+    ends = 2 / cards.stroke
+    sides = np.pi * cards.bore / cards.piston_area
+    size = known.heat_rate / (2 * np.pi * cards.speed) / np.power(known.suction.density, 0.7)
+    size = size * np.exp(state[:, PLACE["heat"]])
+    area = ends[:, None] + sides[:, None] * clear
+    base = size[:, None] * area / clear * np.exp(-0.3 * gas.ln_density)
+    base /= temperature * gas.slope
+    harmonic = 2 * np.square(case.cosine) - 1
+    shape = 1 + state[:, PLACE["shape"], None] * harmonic
+    return _Heat(base, wall - temperature, harmonic, shape, temperature)
 
 
 def _running(rate: Floats, crank_angle: Floats) -> Floats:
     """Integral of a rate per radian from the first node of each span, by trapezoids."""
-    total = np.zeros_like(rate)
-    step = np.diff(crank_angle) * _RADIAN * (rate[:, 1:] + rate[:, :-1]) / 2
-    np.cumsum(step[:, : NODES - 1], axis=-1, out=total[:, 1:NODES])
-    np.cumsum(step[:, NODES:], axis=-1, out=total[:, NODES + 1 :])
-    return total
+    cards = len(rate)
+    shaped = rate.reshape(cards, 2, NODES)
+    step = np.diff(crank_angle.reshape(cards, 2, NODES)) * (_RADIAN / 2)
+    total = np.zeros_like(shaped)
+    np.cumsum(step * (shaped[..., 1:] + shaped[..., :-1]), axis=-1, out=total[..., 1:])
+    return total.reshape(cards, 2 * NODES)
 
 
 def _anchored(values: Floats) -> Floats:
     """Values less that at the first node of the same span."""
-    result = values.copy()
-    result[:, COMPRESSION] -= values[:, :1]
-    result[:, EXPANSION] -= values[:, NODES : NODES + 1]
-    return result
-
-
-def _start_temperatures(case: Problem, state: Floats) -> Floats:
-    """Temperature of each line, followed to suction pressure: (cards, 2 nodes)."""
-    suction = case.cards.suction_temperature[:, None]
-    warming = state[:, PLACE["warming"], None]
-    result = np.repeat(suction + warming, 2 * NODES, axis=-1)
-    result[:, EXPANSION] += state[:, PLACE["clearance_gas"], None]
-    return result
-
-
-def _first_of_span(values: Floats) -> Floats:
     cards = len(values)
-    return np.repeat(values.reshape(cards, 2, NODES)[:, :, 0], NODES, axis=-1)
+    shaped = values.reshape(cards, 2, NODES)
+    return (shaped - shaped[..., :1]).reshape(cards, 2 * NODES)
 
 
-def linearise(case: Problem, state: Floats) -> Linear:
-    """Residuals of the closed spans and their derivatives by all parameters.
+def linearise(case: Problem, state: Floats, *, everything: bool = True) -> Linear:
+    """Residuals of the closed spans and their derivatives by the parameters.
 
     Parameters
     ----------
     case : Problem
     state : (cards, parameters)
         In the order and units of `PARAMETERS`.
+    everything : whether also by mark, level, gain, rod and exponent; else those are zero
 
     Returns
     -------
     Linear
         Derivatives of the heat by clearance and level are left out: they are small of second order.
     """
-    cards, known = case.cards, case.references
-    shift = state[:, PLACE["dead_centre"], None] * _RADIAN
-    sine = case.sine * np.cos(shift) - case.cosine * np.sin(shift)
-    cosine = case.cosine * np.cos(shift) + case.sine * np.sin(shift)
-    ratio = cards.rod_ratio[:, None] * np.exp(state[:, PLACE["rod_ratio"], None])
-    sign = cards.rod_sign[:, None]
-    motion = motion_from_sine(sine, cosine, ratio, sign)
-    clear = state[:, PLACE["clearance"], None] + motion.travel
+    cards = case.cards
+    at, sine, cosine, ratio = _placed(case, state)
+    clear = state[:, PLACE["clearance"], None] + at.travel
     ln_volume = np.log(clear)
+    gain, level = state[:, PLACE["pressure_gain"], None], state[:, PLACE["pressure_level"], None]
     shown = np.exp(case.ln_pressure)
-    pressure = shown * (1 + state[:, PLACE["pressure_gain"], None])
-    pressure = pressure - state[:, PLACE["pressure_level"], None]
     with np.errstate(invalid="ignore"):
-        ln_p = np.log(pressure)
-
-    start = _start_temperatures(case, state)
-    by_temperature = (known.suction.ln_density_by_temperature * cards.suction_temperature)[:, None]
-    ln_start = np.log(known.suction.density)[:, None] + by_temperature * np.log(
-        start / cards.suction_temperature[:, None]
-    )
-    relative = ln_p - np.log(cards.suction_pressure)[:, None]
-    ln_anchor = ln_start + _first_of_span(relative) / known.path.volume_exponent[:, None]
-    fall = _anchored(ln_volume)
-    ln_rho = ln_anchor - fall
-    gas = cards.table.entropy_from_density(ln_p, ln_rho)
-    exponent = -gas.d_ln_rho / gas.d_ln_p
-    factor = state[:, PLACE["exponent"], None]
-    rise = (gas.entropy - _first_of_span(gas.entropy)) / gas.d_ln_p + exponent * factor * fall
-
-    wall = _wall(case, state, start, ln_p, ln_rho, clear)
-    multiplier = np.exp(state[:, PLACE["heat"], None])
-    shape = 1 + state[:, PLACE["shape"], None] * wall.harmonic
-    plain = wall.base * wall.difference
-    flow = plain * shape
-    scale = multiplier / gas.d_ln_p
-    heat = scale * _running(flow, case.crank_angle)
-
-    level = np.repeat(state[:, 1:3], NODES, axis=-1)
-    residual = rise - level - heat
+        ln_p = np.log(shown * (1 + gain) - level)
+    gas = _trapped_gas(case, state, ln_p, ln_volume)
+    wall = _wall_heat(case, state, gas, ln_p, clear)
+    rate = wall.base * wall.shape
+    flow = rate * wall.difference
+    heat = _running(flow, case.crank_angle)
+    residual = gas.rise - np.repeat(state[:, 1:3], NODES, axis=-1) - heat
     jacobian = np.zeros((*residual.shape, len(PARAMETERS)))
-
-    def put(name: str, column: Floats) -> None:
-        jacobian[:, :, PLACE[name]] = column
-
     jacobian[:, COMPRESSION, 1] = -1
     jacobian[:, EXPANSION, 2] = -1
-    put("clearance", exponent * _anchored(1 / clear))
-    put("heat", -heat)
+    jacobian[..., PLACE["clearance"]] = gas.exponent * _anchored(1 / clear)
+    jacobian[..., PLACE["heat"]] = -heat
+    _put_heat_columns(jacobian, case, gas, wall, rate)
+    if everything:
+        by_ratio = travel_by_ratio(sine, cosine, ratio, cards.rod_sign[:, None])[0] * ratio
+        turned = gas.exponent * _RADIAN
+        pressure = np.exp(ln_p)
+        jacobian[..., PLACE["dead_centre"]] = -turned * _anchored(at.slope / clear)
+        jacobian[..., PLACE["pressure_level"]] = -_anchored(1 / pressure)
+        jacobian[..., PLACE["pressure_gain"]] = _anchored(shown / pressure)
+        jacobian[..., PLACE["rod_ratio"]] = gas.exponent * _anchored(by_ratio / clear)
+        jacobian[..., PLACE["exponent"]] = gas.exponent * gas.fall
+    return Linear(residual, jacobian, ln_volume, gas.exponent, flow)
+
+
+def _placed(case: Problem, state: Floats) -> tuple[Place, Floats, Floats, Floats]:
+    """Motion at the nodes for the mark and rod of a state."""
+    cards = case.cards
+    mark, rod = state[:, PLACE["dead_centre"], None], state[:, PLACE["rod_ratio"], None]
+    ratio = cards.rod_ratio[:, None]
+    if not mark.any() and not rod.any():
+        return case.declared, case.sine, case.cosine, ratio
+    shift = mark * _RADIAN
+    sine = case.sine * np.cos(shift) - case.cosine * np.sin(shift)
+    cosine = case.cosine * np.cos(shift) + case.sine * np.sin(shift)
+    ratio = ratio * np.exp(rod)
+    return place_from_sine(sine, cosine, ratio, cards.rod_sign[:, None]), sine, cosine, ratio
+
+
+def _put_heat_columns(
+    jacobian: Floats, case: Problem, gas: _Gas, wall: _Heat, rate: Floats
+) -> None:
+    """Fill in the derivatives by wall temperature, course of the heat and start temperatures."""
+    cards, known = case.cards, case.references
     span = (known.path.temperature - cards.suction_temperature)[:, None]
-    put("wall", -scale * _running(wall.base * shape, case.crank_angle) * span)
-    put("shape", -scale * _running(plain * wall.harmonic, case.crank_angle))
-    cooling = scale * _running(wall.base * shape * wall.temperature / start, case.crank_angle)
-    warming = cooling - _anchored(exponent) * by_temperature / start
-    put("warming", warming)
+    jacobian[..., PLACE["wall"]] = -_running(rate, case.crank_angle) * span
+    wavy = wall.base * wall.difference * wall.harmonic
+    jacobian[..., PLACE["shape"]] = -_running(wavy, case.crank_angle)
+    cooling = _running(rate * wall.temperature / gas.start, case.crank_angle)
+    warming = cooling - _anchored(gas.exponent) * gas.by_temperature / gas.start
+    jacobian[..., PLACE["warming"]] = warming
     jacobian[:, EXPANSION, PLACE["clearance_gas"]] = warming[:, EXPANSION]
-    put("dead_centre", -exponent * _anchored(motion.slope / clear) * _RADIAN)
-    put("pressure_level", -_anchored(1 / pressure))
-    put("pressure_gain", _anchored(shown / pressure))
-    by_ratio = travel_by_ratio(sine, cosine, ratio, sign)[0] * ratio
-    put("rod_ratio", exponent * _anchored(by_ratio / clear))
-    put("exponent", exponent * fall)
-    heat_slope = scale * flow
-    return Linear(residual, jacobian, ln_volume, exponent, heat_slope)

@@ -1,7 +1,7 @@
 """What a user is told when an input cannot be used.
 
-Every error names the file, the place in it, what was found, what was expected and what to do about it,
-in the order in which somebody looks for them.
+Every error names the file, the place in it, what was found, what was expected and what to do about
+it, in the order in which somebody looks for them.
 """
 
 from __future__ import annotations
@@ -35,6 +35,7 @@ class InputError(ValueError):
         expected: str | None = None,
         advice: str | None = None,
     ) -> None:
+        """Keep the parts and compose the message."""
         self.problem = problem
         self.file = file
         self.place = place

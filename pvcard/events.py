@@ -1,12 +1,13 @@
 """When the valves open and close, read from where the trace parts from the closed lines.
 
-The model of a closed span - real gas, wall heat, fitted clearance - is carried on beyond the span, sample by
-sample. While both valves are shut the trace follows it; where gas flows through a valve it departs. No fixed
-angle and no fixed share of the line pressures is used, so pulsation and springs do not mislead.
+The model of a closed span - real gas, wall heat, fitted clearance - is carried on beyond the span,
+sample by sample. While both valves are shut the trace follows it; where gas flows through a valve
+it departs. No fixed angle and no fixed share of the line pressures is used, so pulsation and
+springs do not mislead.
 
-At an opening the departure grows from nothing with a high power of the time; two levels of it point back
-to its start. At a closing, near a dead centre, level errors of the model are as large as the departure,
-so there its slope and bend are watched: a closed line leaves them near zero.
+At an opening the departure grows from nothing with a high power of the time; two levels of it
+point back to its start. At a closing, near a dead centre, level errors of the model are as large
+as the departure, so there its slope and bend are watched: a closed line leaves them near zero.
 """
 
 from __future__ import annotations
@@ -16,14 +17,13 @@ from typing import NamedTuple
 import numpy as np
 
 from pvcard.closed_lines import PLACE, Problem
-from pvcard.kinematics import motion
+from pvcard.kinematics import place_from_sine
 from pvcard.line_fit import CORNERS, Fit
 from pvcard.types import Booleans, Floats, Integers
 from pvcard.uncertainty import Estimate, constant
 
-_RADIAN = np.pi / 180
 _STEP_DEG = 0.5  # spacing at which a departure is followed, or the grid's own if coarser
-_OPENING_REACH_DEG, _CLOSING_REACH_DEG = 40.0, 75.0
+_OPENING_REACH_DEG, _CLOSING_REACH_DEG = 30.0, 65.0
 _OPENING_LEVEL = 1e-3  # least departure in ln p that counts at an opening
 _LEVELS_APART = 8.0  # second level over first; a growth with the third power takes twice the time
 _CLOSING_SLOPE = 1.5e-4  # least slope of the departure in ln p per degree that counts at a closing
@@ -119,21 +119,21 @@ def _departure(
     return _Departure(angle[:, 1:], (measured - modelled)[:, 1:], inside)
 
 
-def _extended(
-    case: Problem, fit: Fit, corner: int, angle: Floats, measured: Floats
-) -> Floats:
+def _extended(case: Problem, fit: Fit, corner: int, angle: Floats, measured: Floats) -> Floats:
     """Modelled ln p along `angle`, from the corner in its first column."""
     cards = case.cards
-    at = motion(angle, cards.rod_ratio[:, None], cards.rod_sign[:, None])
+    turned = np.radians(angle)
+    cosine = np.cos(turned)
+    at = place_from_sine(np.sin(turned), cosine, cards.rod_ratio[:, None], cards.rod_sign[:, None])
     clear = fit.state[:, PLACE["clearance"], None] + at.travel
     ln_volume = np.log(clear)
     exponent = _exponent_along(fit, corner, measured)
-    fall = np.diff(ln_volume) * (exponent[:, 1:] + exponent[:, :-1]) / 2
-    heat = _heat_along(case, fit, corner, angle, ln_volume, measured)
-    gain = np.diff(angle) * _RADIAN * (heat[:, 1:] + heat[:, :-1]) / 2
+    gain = _heat_along(case, fit, corner, cosine, clear, ln_volume, measured)
+    step = np.diff(turned) * (gain[:, 1:] + gain[:, :-1])
+    step -= np.diff(ln_volume) * (exponent[:, 1:] + exponent[:, :-1])
     result = np.empty_like(measured)
     result[:, 0] = measured[:, 0]
-    result[:, 1:] = measured[:, :1] + np.cumsum(gain - fall, axis=-1)
+    result[:, 1:] = measured[:, :1] + np.cumsum(step, axis=-1) / 2
     return result
 
 
@@ -150,18 +150,23 @@ def _exponent_along(fit: Fit, corner: int, ln_pressure: Floats) -> Floats:
 
 
 def _heat_along(
-    case: Problem, fit: Fit, corner: int, angle: Floats, ln_volume: Floats, measured: Floats
+    case: Problem,
+    fit: Fit,
+    corner: int,
+    cosine: Floats,
+    clear: Floats,
+    ln_volume: Floats,
+    measured: Floats,
 ) -> Floats:
     """Change of modelled ln p by heat per radian beyond a span, scaled from its end.
 
     Notes
     -----
-    Heat over stored energy goes with ``rho^0.7 (area) (T_wall - T) / (p V)``, temperature with the product
-    ``p V`` of the trapped mass.
+    Heat over stored energy goes with ``rho^0.7 (area) (T_wall - T) / (p V)``, temperature with the
+    product ``p V`` of the trapped mass.
     """
-    cards, known = case.cards, case.references
+    cards, known, state = case.cards, case.references, fit.state
     node = CORNERS[corner]
-    state = fit.state
     suction = cards.suction_temperature
     start = suction + state[:, PLACE["warming"]]
     if corner > 1:
@@ -169,22 +174,22 @@ def _heat_along(
     exponent = known.path.temperature_exponent
     at_corner = case.ln_pressure[:, node] - np.log(cards.suction_pressure)
     first = start * np.exp(at_corner * (exponent - 1) / exponent)
-    product = np.exp((measured - measured[:, :1]) + (ln_volume - ln_volume[:, :1]))
-    gas = first[:, None] * product
+    fall = ln_volume - ln_volume[:, :1]
+    product = np.exp(measured - measured[:, :1] + fall)
     wall = suction + state[:, PLACE["wall"]] * (known.path.temperature - suction)
-    depth = (cards.bore * cards.stroke * np.pi / (2 * cards.piston_area))[:, None]
-    area = (1 + depth * np.exp(ln_volume)) / (1 + depth * np.exp(ln_volume[:, :1]))
-    density = np.exp(-0.7 * (ln_volume - ln_volume[:, :1]))
-    harmonic = 1 + state[:, PLACE["shape"], None] * np.cos(2 * _RADIAN * angle)
-    difference = (wall[:, None] - gas) * harmonic
-    slope = fit.linear.heat_slope[:, node, None]
+    difference = wall[:, None] - first[:, None] * product
+    difference *= 1 + state[:, PLACE["shape"], None] * (2 * np.square(cosine) - 1)
     own = difference[:, :1]
     safe = np.where(np.abs(own) < 1.0, np.where(own < 0, -1.0, 1.0), own)
-    return slope / safe * difference * area * density / product
+    depth = (cards.bore * cards.stroke * np.pi / (2 * cards.piston_area))[:, None]
+    scale = fit.linear.heat_slope[:, node, None] / safe / (1 + depth * clear[:, :1])
+    result: Floats = scale * difference * (1 + depth * clear) * np.exp(-0.7 * fall) / product
+    return result
 
 
 def _first_true(mask: Booleans) -> tuple[Integers, Booleans]:
-    return np.argmax(mask, axis=-1), mask.any(-1)
+    found: Booleans = np.any(mask, axis=-1)
+    return np.argmax(mask, axis=-1), found
 
 
 def _crossing(departure: _Departure, size: Floats, level: Floats) -> tuple[Floats, Booleans]:

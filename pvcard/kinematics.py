@@ -1,8 +1,8 @@
 """Slider-crank motion of a piston with a finite connecting rod, seen from either cylinder end.
 
-Angles are counted from the dead centre at which the volume of that end is smallest: for a crank end 180
-degrees after the head end's. Seen like this both ends obey one formula in which only the sign of the
-rod's share differs: ``rod_sign`` is +1 for a head end and -1 for a crank end.
+Angles are counted from the dead centre at which the volume of that end is smallest: for a crank
+end 180 degrees after the head end's. Seen like this both ends obey one formula in which only the
+sign of the rod's share differs: ``rod_sign`` is +1 for a head end and -1 for a crank end.
 """
 
 from __future__ import annotations
@@ -29,6 +29,13 @@ def _rod_root(sine: Floats, ratio: Floats | float) -> Floats:
     return root
 
 
+class Place(NamedTuple):
+    """Piston position as a fraction of the stroke and its first derivative by crank angle."""
+
+    travel: Floats
+    slope: Floats  # 1/rad
+
+
 def motion(crank_angle_deg: Floats, ratio: Floats | float, rod_sign: Floats | float) -> Motion:
     """Fraction of the stroke travelled from an end's own dead centre, with two derivatives.
 
@@ -49,13 +56,14 @@ def motion(crank_angle_deg: Floats, ratio: Floats | float, rod_sign: Floats | fl
 
     Notes
     -----
-    ``travel = (1 - cos t + sign (1 - q) / ratio) / 2`` with ``q = sqrt(1 - ratio^2 sin^2 t)`` [1]_: exact for a
-    rod of finite length. The two-term series is never used; it is wrong in volume by parts in a
-    thousand.
+    ``travel = (1 - cos t + sign (1 - q) / ratio) / 2`` with ``q = sqrt(1 - ratio^2 sin^2 t)``
+    [1]_: exact for a rod of finite length. The two-term series is never used; it is wrong in
+    volume by parts in a thousand.
 
     References
     ----------
-    .. [1] R. S. Khurmi and J. K. Gupta, *Theory of Machines*, chapter 15: displacement, velocity and
+    .. [1] R. S. Khurmi and J. K. Gupta, *Theory of Machines*, chapter 15: displacement, velocity
+    and
        acceleration of the reciprocating parts, before the series is cut.
 
     Examples
@@ -85,14 +93,79 @@ def motion_from_sine(
     Motion
         As in `motion`.
     """
+    travel, slope = place_from_sine(sine, cosine, ratio, rod_sign)
+    return Motion(travel, slope, curvature_from_sine(sine, cosine, ratio, rod_sign))
+
+
+def place(crank_angle_deg: Floats, ratio: Floats | float, rod_sign: Floats | float) -> Place:
+    """Travel and slope alone: `motion` without the second derivative.
+
+    Parameters
+    ----------
+    crank_angle_deg, ratio, rod_sign
+        As in `motion`.
+
+    Returns
+    -------
+    Place
+        Shape of the angle.
+    """
+    angle = np.radians(crank_angle_deg)
+    return place_from_sine(np.sin(angle), np.cos(angle), ratio, rod_sign)
+
+
+def place_from_sine(
+    sine: Floats, cosine: Floats, ratio: Floats | float, rod_sign: Floats | float
+) -> Place:
+    """Travel and slope alone, for sines and cosines that are already known.
+
+    Parameters
+    ----------
+    sine, cosine : (samples,) or (cards, samples)
+        Of the crank angle from the dead centre of that end. [-]
+    ratio, rod_sign : () or (cards, 1)
+        As in `motion`. [-]
+
+    Returns
+    -------
+    Place
+        As in `motion`.
+    """
     root = _rod_root(sine, ratio)
-    share = rod_sign * ratio / root
-    travel = 0.5 * (1 - cosine + share * np.square(sine) * root / (1 + root))
-    slope = 0.5 * sine * (1 + share * cosine)
+    half = 0.5 * rod_sign * ratio
+    share = half / root
+    share *= cosine
+    share += 0.5
+    slope: Floats = share
+    slope *= sine
+    root += 1
+    travel: Floats = np.divide(half * np.square(sine), root, out=root)
+    travel += 0.5 * (1 - cosine)
+    return Place(travel, slope)
+
+
+def curvature_from_sine(
+    sine: Floats, cosine: Floats, ratio: Floats | float, rod_sign: Floats | float
+) -> Floats:
+    """Second derivative of the travel by the crank angle.
+
+    Parameters
+    ----------
+    sine, cosine : (samples,) or (cards, samples)
+        Of the crank angle from the dead centre of that end. [-]
+    ratio, rod_sign : () or (cards, 1)
+        As in `motion`. [-]
+
+    Returns
+    -------
+    curvature : shape of the angle
+        [1/rad2]
+    """
+    root = _rod_root(sine, ratio)
     squares = np.square(cosine)
     bend = np.square(ratio * sine / root) * squares
-    curvature = 0.5 * (cosine + share * (2 * squares - 1 + bend))
-    return Motion(travel, slope, curvature)
+    curvature: Floats = 0.5 * (cosine + rod_sign * ratio / root * (2 * squares - 1 + bend))
+    return curvature
 
 
 def travel_by_ratio(
@@ -177,8 +250,8 @@ def acceleration(
 
     Notes
     -----
-    ``r w^2 (cos t + m cos 2t / q + m^3 sin^2 t cos^2 t / q^3)`` with m the ratio of radius to rod: the second
-    derivative of the exact travel, not the two-term series.
+    ``r w^2 (cos t + m cos 2t / q + m^3 sin^2 t cos^2 t / q^3)`` with m the ratio of radius to rod:
+    the second derivative of the exact travel, not the two-term series.
 
     Examples
     --------

@@ -1,11 +1,11 @@
 """Fit of the closed spans: clearance, wall heat and start temperatures, with all that they rest on.
 
-Gauss-Newton with the declared machine and published ranges as priors. Parameters that are not free - the
-mark, the level, the gas - stay where they were declared, yet what their uncertainty does to the fitted
-ones is carried exactly, so that later rooms may free them without another formula.
+Gauss-Newton with the declared machine and published ranges as priors. Parameters that are not free
+- the mark, the level, the gas - stay where they were declared, yet what their uncertainty does to
+the fitted ones is carried exactly, so that later rooms may free them without another formula.
 
-The noise of a trace is white between samples and, far larger in effect, correlated along the turn: misfit
-of any gas and heat model. The scatter that the fit leaves scales it.
+The noise of a trace is white between samples and, far larger in effect, correlated along the turn:
+misfit of any gas and heat model. The scatter that the fit leaves scales it.
 """
 
 from __future__ import annotations
@@ -30,7 +30,8 @@ FREE = (
     "warming",
     "clearance_gas",
 )
-# Standard deviations of the priors. Annand's coefficient scatters by a factor of 1.65 among published machines;
+# Standard deviations of the priors. Annand's coefficient scatters by a factor of 1.65 among
+# published machines;
 # the others are judgements, of the size common practice sees (common practice, no source).
 HEAT_PRIOR = 0.5
 WALL_PRIOR = (0.5, 0.15)
@@ -39,7 +40,9 @@ WARMING_PRIOR = 3.0  # K, beyond what the heat balance of the suction stroke say
 CLEARANCE_GAS_PRIOR = 4.0  # K
 MODEL_NOISE = 1e-4  # of pressure: misfit of any model of a closed line
 CORRELATION_DEG = 8.0  # over which that misfit is alike
-GAS_EXCHANGE = 2.2  # wall heat while gas flows in, over that of closed valves: Woschni's (6.18 / 2.28)^0.8
+GAS_EXCHANGE = (
+    2.2  # wall heat while gas flows in, over that of closed valves: Woschni's (6.18 / 2.28)^0.8
+)
 ITERATIONS = 3
 CORNERS = (0, NODES - 1, NODES, 2 * NODES - 1)  # first and last node of compression, of expansion
 _HEAT_STEP, _HEAT_RANGE = 0.7, np.log(4.0)
@@ -61,7 +64,8 @@ class Fit(NamedTuple):
 class _Priors(NamedTuple):
     mean: Floats  # (cards, free)
     weight: Floats  # (cards, free), one over variance
-    row: Floats  # (cards, free): the heat balance of the suction stroke, linear in the free parameters
+    # (cards, free): the heat balance of the suction stroke, linear in the free parameters
+    row: Floats
     balance: Floats  # (cards,) K, its value at zero
 
 
@@ -79,7 +83,8 @@ def fit_lines(
     case : Problem
         From `pvcard.closed_lines.problem`.
     clearance_uncertainty : (cards,)
-        Standard uncertainty of the declared clearance, fraction of swept volume; infinite drops it. [-]
+        Standard uncertainty of the declared clearance, fraction of swept volume; infinite drops
+        it. [-]
     white_noise : (cards,)
         Standard deviation of single samples, relative to pressure. [-]
     with_uncertainty : whether to carry derivatives by the inputs
@@ -122,7 +127,7 @@ def _solve(
     weight = _weights(case, white_noise)
     free = slice(0, len(FREE))
     for _ in range(ITERATIONS):
-        linear = linearise(case, state)
+        linear = linearise(case, state, everything=False)
         information = _information(linear, weight, priors)
         pull = np.einsum("cnp,cn->cp", linear.jacobian[..., free], weight * linear.residual)
         gap = priors.balance + np.einsum("cp,cp->c", priors.row, state[:, free])
@@ -147,7 +152,7 @@ def _bounded(state: Floats, step: Floats) -> Floats:
 
 def _solved(matrix: Floats, right: Floats) -> Floats:
     """Solve for each card; NaN where the card has no numbers."""
-    good = np.isfinite(matrix).all((-1, -2))
+    good: Booleans = np.all(np.isfinite(matrix), axis=(-1, -2))
     safe = np.where(good[:, None, None], matrix, np.eye(matrix.shape[-1]))
     result = np.linalg.solve(safe, np.where(good[:, None, None], right, 0.0))
     result[~good] = np.nan
@@ -195,8 +200,9 @@ def _suction_balance(case: Problem) -> tuple[Floats, Floats]:
 
     Notes
     -----
-    First law of the suction stroke, gas of constant heat capacity: fresh gas takes heat from the wall and the
-    work lost in the valve; the gas left in the clearance mixes in with its own temperature.
+    First law of the suction stroke, gas of constant heat capacity: fresh gas takes heat from the
+    wall and the work lost in the valve; the gas left in the clearance mixes in with its own
+    temperature.
     """
     cards, known = case.cards, case.references
     clearance = start_clearance(cards)
@@ -213,7 +219,8 @@ def _suction_balance(case: Problem) -> tuple[Floats, Floats]:
     drop = 1 - cards.pressure[:, out].mean(-1) / cards.suction_pressure
     exponent = known.path.temperature_exponent
     loss = cards.suction_temperature * (exponent - 1) / exponent * np.clip(drop, 0, 0.2)
-    # warming (1 - share + gain / 2) = gain wall span + loss + share (clearance gas), gain ~ exp(heat)
+    # warming (1 - share + gain / 2) = gain wall span + loss + share (clearance gas), gain ~
+    # exp(heat)
     row = np.zeros((len(span), len(FREE)))
     row[:, 6] = 1
     mixed = 1 / (1 - share + gain / 2)
@@ -225,7 +232,8 @@ def _suction_balance(case: Problem) -> tuple[Floats, Floats]:
 
 
 def _clearance_gas_mean(case: Problem) -> Floats:
-    """Cooling of the gas in the clearance while the piston turns, followed to suction pressure. [K]."""
+    """Cooling of the gas in the clearance while the piston turns, followed to suction pressure.
+    [K]."""
     cards, known = case.cards, case.references
     density = known.path.density2
     rate = known.heat_rate * np.power(density / known.path.density1, 0.7)
@@ -238,7 +246,8 @@ def _clearance_gas_mean(case: Problem) -> Floats:
 
 
 def _misfit(linear: Linear) -> Floats:
-    return np.sqrt(np.mean(np.square(linear.residual), axis=-1))
+    misfit: Floats = np.sqrt(np.mean(np.square(linear.residual), axis=-1))
+    return misfit
 
 
 def _without_prior(
@@ -309,9 +318,7 @@ def _considered(case: Problem, linear: Linear) -> list[tuple[str, Floats]]:
     ]
 
 
-def _noise_factors(
-    case: Problem, gain: Floats, white_noise: Floats, misfit: Floats
-) -> Floats:
+def _noise_factors(case: Problem, gain: Floats, white_noise: Floats, misfit: Floats) -> Floats:
     """Square root of the covariance that noise and misfit of the trace leave in the parameters."""
     count = len(gain)
     angle = case.crank_angle.reshape(count, 2, NODES)
@@ -335,7 +342,8 @@ def _noise_factors(
 
 
 def _corner_slopes(case: Problem, linear: Linear, slopes: Floats) -> Floats:
-    """Change of the modelled line at the ends of both spans, crank angle fixed, with every input."""
+    """Change of the modelled line at the ends of both spans, crank angle fixed, with every
+    input."""
     jacobian = linear.jacobian[:, CORNERS, :]
     result: Floats = -(jacobian @ slopes)
     result[..., INDEX["suction_temperature"]] -= jacobian[..., PLACE["warming"]]

@@ -1,7 +1,8 @@
 """The register of every reported quantity: name, label, unit, meaning.
 
-Tables, report labels and the glossary are made from it; other rooms look names up here. A column's name is the
-quantity followed by its unit; ``u_`` in front of it is its standard uncertainty in the same unit.
+Tables, report labels and the glossary are made from it; other rooms look names up here. A column's
+name is the quantity followed by its unit; ``u_`` in front of it is its standard uncertainty in the
+same unit.
 """
 
 from __future__ import annotations
@@ -79,7 +80,8 @@ _POWER = [
         "other_loss_kW",
         "Remaining difference",
         "kW",
-        "indicated less theoretical less both valve losses: heat, leaks, late valves; may be negative",
+        "indicated less theoretical less both valve losses: heat, leaks, late valves; "
+        "may be negative",
     ),
     (
         "suction_valve_loss_pct",
@@ -137,7 +139,12 @@ _VALVES = [
         "after the dead centre of least volume of this end",
     ),
     ("suction_closing_deg", "Suction valve closes", "deg", "after the dead centre of least volume"),
-    ("discharge_opening_deg", "Discharge valve opens", "deg", "after the dead centre of least volume"),
+    (
+        "discharge_opening_deg",
+        "Discharge valve opens",
+        "deg",
+        "after the dead centre of least volume",
+    ),
     (
         "discharge_closing_deg",
         "Discharge valve closes",

@@ -14,8 +14,8 @@ Row = dict[str, Any]
 class RecordingResult:
     """One analysed recording: the JSON object of the contract plus arrays for plots.
 
-    ``ends``, ``cylinders`` and ``totals`` are rows of quantities with units in their names; a missing
-    value is None and the row's ``reason`` says why.
+    ``ends``, ``cylinders`` and ``totals`` are rows of quantities with units in their names; a
+    missing value is None and the row's ``reason`` says why.
     """
 
     recording: Row  # machine, time, source, cycles, samples, load_step

@@ -1,4 +1,5 @@
-"""Results as text: a table for people, CSV and JSON for machines, files written aside and renamed."""
+"""Results as text: a table for people, CSV and JSON for machines, files written aside and
+renamed."""
 
 from __future__ import annotations
 
@@ -58,7 +59,13 @@ def as_csv_files(analysis: Analysis) -> dict[str, str]:
     dict
         Text by table: "" for the ends, then cylinders, totals, findings and repairs.
     """
-    tables: dict[str, list[Row]] = {"": [], "cylinders": [], "totals": [], "findings": [], "repairs": []}
+    tables: dict[str, list[Row]] = {
+        "": [],
+        "cylinders": [],
+        "totals": [],
+        "findings": [],
+        "repairs": [],
+    }
     for one in analysis.recordings:
         front = {
             "recording": one.recording["source"],
@@ -177,7 +184,11 @@ def _recording_table(one: RecordingResult, units: str) -> str:
         + "; figures with standard uncertainty, '-' not determined"
     )
     lines = [*head, ""]
-    rows = [row for row in one.ends if any(row[name] is not None for name in QUANTITIES if name not in END_IDENTITY)]
+    rows = [
+        row
+        for row in one.ends
+        if any(row[name] is not None for name in QUANTITIES if name not in END_IDENTITY)
+    ]
     for first in range(0, len(rows), _COLUMNS_ACROSS):
         lines += _ends_block(rows[first : first + _COLUMNS_ACROSS], units)
     lines += _totals_block(one.totals, units)
@@ -237,7 +248,11 @@ def _shown(row: Row, quantity: Quantity, unit: DisplayUnit) -> str:
 
 
 def _totals_block(totals: list[Row], units: str) -> list[str]:
-    shown = [quantity for quantity in TOTAL_QUANTITIES.values() if not quantity.column.startswith("torque")]
+    shown = [
+        quantity
+        for quantity in TOTAL_QUANTITIES.values()
+        if not quantity.column.startswith("torque")
+    ]
     lines = ["Totals"]
     for row in totals:
         parts = []
@@ -251,7 +266,8 @@ def _totals_block(totals: list[Row], units: str) -> list[str]:
 
 
 def _reasons(ends: list[Row]) -> list[str]:
-    """Why something is missing, each reason once; parts that do not exist yet are left to the JSON."""
+    """Why something is missing, each reason once; parts that do not exist yet are left to the
+    JSON."""
     said: dict[str, list[str]] = {}
     for row in ends:
         for reason in dict.fromkeys(row["reason"].values()):

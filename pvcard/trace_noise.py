@@ -12,9 +12,7 @@ from pvcard.windows import Windows
 _SAMPLES = 40  # per span, at most
 
 
-def relative_noise(
-    cards: CardSet, turn: Turning, windows: Windows, exponent: Floats
-) -> Floats:
+def relative_noise(cards: CardSet, turn: Turning, windows: Windows, exponent: Floats) -> Floats:
     """Standard deviation of single samples over their pressure.
 
     Parameters
@@ -31,8 +29,8 @@ def relative_noise(
 
     Notes
     -----
-    The fourth difference of white noise of variance ``v`` has variance ``70 v`` (sum of the squared binomial
-    coefficients 1, 4, 6, 4, 1); anything smooth nearly vanishes in it.
+    The fourth difference of white noise of variance ``v`` has variance ``70 v`` (sum of the
+    squared binomial coefficients 1, 4, 6, 4, 1); anything smooth nearly vanishes in it.
     """
     row = np.arange(len(cards.pressure))[:, None]
     total = np.zeros(len(row))

@@ -1,8 +1,9 @@
 """Named inputs, who shares them, and the propagation of their uncertainty.
 
-Every figure is carried as an `Estimate`: its value and its derivatives by the named inputs, exact by the
-rules of calculus, the law of propagation of the GUM [1]_ applied only at the end. What two figures have
-in common - the mark, the gas, the bore - stays in common, so that sums and differences come out right.
+Every figure is carried as an `Estimate`: its value and its derivatives by the named inputs, exact
+by the rules of calculus, the law of propagation of the GUM [1]_ applied only at the end. What two
+figures have in common - the mark, the gas, the bore - stays in common, so that sums and
+differences come out right.
 
 References
 ----------
@@ -222,8 +223,8 @@ def sum_uncertainty(shares: Floats, cylinders: list[str]) -> float:
 
     Notes
     -----
-    An input shared by several cards adds up before it is squared; the others are squared first: equation
-    16 of JCGM 100 with correlations of one and zero.
+    An input shared by several cards adds up before it is squared; the others are squared first:
+    equation 16 of JCGM 100 with correlations of one and zero.
     """
     names = sorted(set(cylinders))
     member = np.array([[own == name for own in cylinders] for name in names], dtype=float)

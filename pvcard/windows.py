@@ -1,9 +1,9 @@
 """Where on a card both valves are shut: the spans from which lines are fitted.
 
-The spans are read from the trace itself, between two pressures that lie inside the ratio of the line
-pressures. Seen in the direction of rotation the expansion ends where the trace first falls below the lower
-one, and compression begins where it leaves it for the last time before it first passes the upper one;
-pulsation and ripple while a valve is open do not disturb that.
+The spans are read from the trace itself, between two pressures that lie inside the ratio of the
+line pressures. Seen in the direction of rotation the expansion ends where the trace first falls
+below the lower one, and compression begins where it leaves it for the last time before it first
+passes the upper one; pulsation and ripple while a valve is open do not disturb that.
 """
 
 from __future__ import annotations

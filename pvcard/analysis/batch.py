@@ -85,7 +85,10 @@ def measure_jobs(
         for first in range(0, len(members), CHUNK):
             part = members[first : first + CHUNK]
             for number, outcome in zip(
-                part, _measure_part([jobs[one] for one in part], gases[int(str(key[0]))], with_uncertainty)
+                part,
+                _measure_part(
+                    [jobs[one] for one in part], gases[int(str(key[0]))], with_uncertainty
+                ),
             ):
                 outcomes[number] = outcome
             done += len(part)
@@ -103,8 +106,8 @@ def _unusable(job: Job) -> str:
         )
     if not np.all(job.trace.pressure > 0):
         return (
-            "the trace reaches below zero absolute pressure: check whether gauge readings were taken "
-            "as absolute"
+            "the trace reaches below zero absolute pressure: check whether gauge readings were "
+            "taken as absolute"
         )
     if not lines.suction_pressure > 0:
         return "the suction pressure is not above zero absolute: check its unit, gauge or absolute"
@@ -153,7 +156,10 @@ def _measure_part(jobs: list[Job], gas: Gas, with_uncertainty: bool) -> list[Out
 
 def _table(jobs: list[Job], gas: Gas) -> GasTable:
     lines = [job.trace.lines for job in jobs]
-    low = min(min(one.suction_pressure for one in lines), min(float(job.trace.pressure.min()) for job in jobs))
+    low = min(
+        min(one.suction_pressure for one in lines),
+        min(float(job.trace.pressure.min()) for job in jobs),
+    )
     high = max(
         max(one.discharge_pressure for one in lines),
         max(float(job.trace.pressure.max()) for job in jobs),
@@ -161,7 +167,11 @@ def _table(jobs: list[Job], gas: Gas) -> GasTable:
     cold = min(one.suction_temperature for one in lines)
     hot = max(
         float(
-            gas.isentropic(one.suction_pressure, one.suction_temperature, one.discharge_pressure)[0]
+            gas.isentropic(
+                np.array(one.suction_pressure),
+                np.array(one.suction_temperature),
+                np.array(one.discharge_pressure),
+            ).temperature
         )
         for one in lines
     )

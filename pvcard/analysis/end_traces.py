@@ -88,8 +88,10 @@ def gather(recording: Recording, machine: Machine) -> Gathered:
     speed, speed_u = _speed(result, parted)
     channels = {channel.key: channel for channel in recording.channels}
     for cylinder in machine.cylinders:
-        mine = [end for end in cylinder.ends if (cylinder.name, end.name, CYLINDER_PRESSURE) in channels]
-        own = [end.name for end in mine]
+        mine = [
+            end for end in cylinder.ends if (cylinder.name, end.name, CYLINDER_PRESSURE) in channels
+        ]
+        own: list[str] = [end.name for end in mine]
         result.absent.extend((cylinder, end.name) for end in cylinder.ends if end.name not in own)
         if not own:
             continue
@@ -182,15 +184,14 @@ def _speed(result: Gathered, parted: Turns) -> tuple[float, float]:
     return rated, 0.02
 
 
-def _own_trace(
-    parted: Turns, cylinder: Cylinder, end: str, kind: str
-) -> tuple[Floats, Floats]:
+def _own_trace(parted: Turns, cylinder: Cylinder, end: str, kind: str) -> tuple[Floats, Floats]:
     """Turns of a channel on the angle from the end's own dead centre."""
     start = cylinder.dead_centre + (0.0 if end == "head" else 180.0)
-    own = np.mod(parted.crank_angle - start, 360.0)
-    own = np.where(own > 360.0 - 1e-7, 0.0, own)
+    own: Floats = np.mod(parted.crank_angle - start, 360.0)
+    own[own > 360.0 - 1e-7] = 0.0
     order: Integers = np.argsort(own, kind="stable")
-    return np.round(own[order], 9), parted.pressures[cylinder.name, end, kind][:, order]
+    angle: Floats = np.round(own[order], 9)
+    return angle, parted.pressures[cylinder.name, end, kind][:, order]
 
 
 def _scatter(stack: Floats, angle: Floats) -> float:

@@ -101,7 +101,10 @@ def _seen(job: Job, outcome: Outcome) -> Seen:
     row = outcome.row
     if not measured.closed[row]:
         return Seen(end, not _idle(job), np.nan, np.inf)
-    alone, alone_u = float(measured.fit.clearance_alone[row]), float(measured.fit.clearance_alone_u[row])
+    alone, alone_u = (
+        float(measured.fit.clearance_alone[row]),
+        float(measured.fit.clearance_alone_u[row]),
+    )
     estimate = estimate_of(outcome, "clearance_pct")
     if estimate is None or not estimate.slopes.shape[1]:
         return Seen(end, True, alone, alone_u)
@@ -191,9 +194,8 @@ def _result(
 def _why_idle(machine: Machine, job: Job, choice: StepChoice) -> str:
     state = machine.end_state(job.trace.cylinder, job.trace.end, choice.name)
     high = job.trace.pressure.max() / 1e5
-    text = (
-        f"its pressure reaches only {high:.4g} bar of {job.trace.lines.discharge_pressure / 1e5:.4g} bar"
-    )
+    wanted = job.trace.lines.discharge_pressure / 1e5
+    text = f"its pressure reaches only {high:.4g} bar of {wanted:.4g} bar"
     if state in ("suction_valves_held_open", "suction_valves_removed"):
         return f"{text}, as the load step '{choice.name}' says ({state.replace('_', ' ')})"
     return f"{text}, although it is declared as loaded"
@@ -223,7 +225,9 @@ def _with_others(
             row = open_row(
                 cylinder.name, end.name, cylinder.stage, choices[cylinder.name].name, reason
             )
-            _line_pressures(row, [item for (name, _), item in known.items() if name == cylinder.name])
+            _line_pressures(
+                row, [item for (name, _), item in known.items() if name == cylinder.name]
+            )
             result.append((row, None))
     del gathered
     return result
@@ -258,8 +262,8 @@ def _repairs_of(job: Job, outcome: Outcome, row: Row) -> list[Row]:
     power = row["indicated_power_kW"]
     if power is not None and power < 0:
         text = (
-            "the loop gives work instead of taking it in: the angle runs against the rotation, or the "
-            "ends are swapped; nothing was changed"
+            "the loop gives work instead of taking it in: the angle runs against the rotation, or "
+            "the ends are swapped; nothing was changed"
         )
         repairs.append(repair_entry("reversed_angle", text, **where, applied=False))
     return repairs

@@ -1,8 +1,8 @@
 """Whether pressures written with a bare unit are absolute or gauge: decided by their own level.
 
-A bare unit is never guessed silently. Where trace and line reading differ in how they were written, the
-one with a reference decides about the other; where both are bare they share one reading, the one in
-which the level of the trace fits, and the answer says so.
+A bare unit is never guessed silently. Where trace and line reading differ in how they were
+written, the one with a reference decides about the other; where both are bare they share one
+reading, the one in which the level of the trace fits, and the answer says so.
 """
 
 from __future__ import annotations
@@ -116,14 +116,15 @@ def trace_level(
     gauge = not lines.from_trace and abs(level + barometer - line) < abs(level - line)
     meaning = "gauge" if gauge else "absolute"
     evidence = (
-        f"the unit '{channel.unit}' does not say whether it is absolute or gauge; read as {meaning}, "
-        f"since the trace lies at {level / 1e5:.4g} bar while gas is drawn in and the suction line at "
-        f"{line / 1e5:.4g} bar absolute"
+        f"the unit '{channel.unit}' does not say whether it is absolute or gauge; read as "
+        f"{meaning}, since the trace lies at {level / 1e5:.4g} bar while gas is drawn in and the "
+        f"suction line at {line / 1e5:.4g} bar absolute"
     )
     if lines.from_trace or (not shift.decided and shift.lines == 0.0):
         evidence = (
             f"neither the unit '{channel.unit}' of the trace nor that of the line pressure says "
-            f"whether it is absolute or gauge; both were read as {meaning}. Write (a) or (g) behind it"
+            f"whether it is absolute or gauge; both were read as {meaning}. "
+            "Write (a) or (g) behind it"
         )
     repair = repair_entry(
         "pressure_level_offset",

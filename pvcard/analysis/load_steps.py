@@ -10,7 +10,9 @@ from pvcard.machine import Cylinder, Machine
 
 NAMED_ODDS = 0.9  # trust in a step that the export names (common practice, no source)
 CONTRADICTED = 0.95  # probability from which another step is believed instead
-_STATE_MISMATCH = -12.0  # log likelihood of an end that compresses although held open, or the reverse
+_STATE_MISMATCH = (
+    -12.0
+)  # log likelihood of an end that compresses although held open, or the reverse
 _STILL = ("suction_valves_held_open", "suction_valves_removed")
 
 
@@ -74,8 +76,8 @@ def choose_step(
 
     Notes
     -----
-    Bayes' rule with Gaussian clearances: a pocket is told by the clearance it adds, an unloaded end by
-    not compressing at all.
+    Bayes' rule with Gaussian clearances: a pocket is told by the clearance it adds, an unloaded
+    end by not compressing at all.
     """
     names = steps_of(machine, cylinder)
     if not names:

@@ -31,8 +31,8 @@ def passage_loss(outcome: Outcome, side: str, line: Floats) -> tuple[float, floa
 
     Notes
     -----
-    Same stretch as the valve loss. The uncertainty adds the level of the line's transducer, taken as that
-    of the cylinder's, to what both losses share.
+    Same stretch as the valve loss. The uncertainty adds the level of the line's transducer, taken
+    as that of the cylinder's, to what both losses share.
     """
     measured, cards, row = outcome.measured, outcome.cards, outcome.row
     if measured is None or cards is None or outcome.input_uncertainty is None:

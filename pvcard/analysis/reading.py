@@ -36,7 +36,9 @@ def read_with_machines(
     """
     for export in exports:
         if Path(export).is_dir():
-            raise ExportError("this is a folder, not an export", file=str(export), expected="a file")
+            raise ExportError(
+                "this is a folder, not an export", file=str(export), expected="a file"
+            )
     column_map = read_columns(columns) if columns else None
     if not Path(machine).is_dir():
         only = read_machine(machine)

@@ -1,4 +1,5 @@
-"""Measured columns of one end as a row: values, uncertainties, and a reason for each that is missing."""
+"""Measured columns of one end as a row: values, uncertainties, and a reason for each that is
+missing."""
 
 from __future__ import annotations
 
@@ -22,8 +23,8 @@ _LATER = {
 }
 _RUNNING_GEAR = "this version of pvcard does not compute rod loads and torque"
 _FLAT = (
-    "the trace does not run from suction to discharge pressure and back: the end does not compress, or "
-    "a line pressure or unit is wrong"
+    "the trace does not run from suction to discharge pressure and back: the end does not compress, "
+    "or a line pressure or unit is wrong"
 )
 # Columns that need both closed spans of the card.
 _CLOSED = (
@@ -92,7 +93,7 @@ def open_row(cylinder: str, end: str, stage: int, load_step: str | None, reason:
     row: Row = {"cylinder": cylinder, "end": end, "stage": stage, "load_step": load_step}
     for column in END_COLUMNS:
         put(row, column, None, None)
-    row["reason"] = {column: reason for column in END_COLUMNS}
+    row["reason"] = dict.fromkeys(END_COLUMNS, reason)
     return row
 
 
@@ -145,7 +146,9 @@ def estimate_of(outcome: Outcome, column: str) -> Estimate | None:
     if outcome.measured is None or column not in outcome.measured.columns:
         return None
     whole = outcome.measured.columns[column]
-    return Estimate(whole.value[outcome.row : outcome.row + 1], whole.slopes[outcome.row : outcome.row + 1])
+    return Estimate(
+        whole.value[outcome.row : outcome.row + 1], whole.slopes[outcome.row : outcome.row + 1]
+    )
 
 
 def _figure(measured: Measured, outcome: Outcome, column: str) -> tuple[float | None, float | None]:
@@ -236,5 +239,5 @@ def cylinder_row(name: str) -> Row:
     for column in CYLINDER_QUANTITIES:
         row[column] = None
         row[f"u_{column}"] = None
-    row["reason"] = {column: _RUNNING_GEAR for column in CYLINDER_QUANTITIES}
+    row["reason"] = dict.fromkeys(CYLINDER_QUANTITIES, _RUNNING_GEAR)
     return row

@@ -88,7 +88,8 @@ def _row(
 def _active(
     ends: list[tuple[Row, Outcome | None]], column: str, idle: set[tuple[str, str]]
 ) -> list[tuple[Row, Outcome | None]]:
-    """Ends that take part: an idle end has power, yet neither delivers nor has a theoretical card."""
+    """Ends that take part: an idle end has power, yet neither delivers nor has a theoretical
+    card."""
     if column == "indicated_power_kW":
         return [one for one in ends if one[1] is not None]
     return [
@@ -98,9 +99,7 @@ def _active(
     ]
 
 
-def _shares(
-    ends: list[tuple[Row, Outcome | None]], column: str, source: str
-) -> Floats | None:
+def _shares(ends: list[tuple[Row, Outcome | None]], column: str, source: str) -> Floats | None:
     """Signed contributions of every input to every term of a sum."""
     shares = []
     for row, outcome in ends:

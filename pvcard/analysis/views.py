@@ -76,9 +76,7 @@ def _ideal(outcome: Outcome, clearance: float) -> tuple[Floats, Floats]:
     return volume[0], pressure[0]
 
 
-def _fitted(
-    measured: Measured, row: int, swept: float
-) -> tuple[Floats, Floats, Floats, Floats]:
+def _fitted(measured: Measured, row: int, swept: float) -> tuple[Floats, Floats, Floats, Floats]:
     """Both fitted lines with their extensions to the line pressures."""
     case, fit, at = measured.case, measured.fit, measured.crossings
     cards = case.cards

@@ -43,10 +43,11 @@ def capacity(
 
     Notes
     -----
-    Per turn the compression line holds ``rho(p_s, T_1) V_1`` and the expansion line ``rho(p_s, T_4) V_4``,
-    both followed to suction pressure; their difference is delivered, if nothing leaks. ``T_1`` and ``T_4``
-    come out of the fit: warming by wall, valve loss and clearance gas. Nothing is read off the closing of a
-    valve, which would mistake a late one for capacity.
+    Per turn the compression line holds ``rho(p_s, T_1) V_1`` and the expansion line ``rho(p_s,
+    T_4) V_4``, both followed to suction pressure; their difference is delivered, if nothing leaks.
+    ``T_1`` and
+    ``T_4`` come out of the fit: warming by wall, valve loss and clearance gas. Nothing is read off
+    the closing of a valve, which would mistake a late one for capacity.
     """
     lines = (cards.suction_pressure, cards.discharge_pressure)
     efficiency, delivery = stroke_fractions(case, fit, at, lines)

@@ -1,4 +1,5 @@
-"""The theoretical card: isentropic real gas from the suction line state at the card's own clearance."""
+"""The theoretical card: isentropic real gas from the suction line state at the card's own
+clearance."""
 
 from __future__ import annotations
 
@@ -40,8 +41,8 @@ def line_states(cards: CardSet, known: References, inputs: int) -> LineStates:
 
     Notes
     -----
-    Slopes by pressures and temperature are those of the gas table. An error of the exponent moves density,
-    temperature and work of the path as it would for an ideal gas.
+    Slopes by pressures and temperature are those of the gas table. An error of the exponent moves
+    density, temperature and work of the path as it would for an ideal gas.
     """
     suction = constant(cards.suction_pressure, inputs).depending_on("suction_pressure", 1.0)
     discharge = constant(cards.discharge_pressure, inputs).depending_on("discharge_pressure", 1.0)
@@ -102,12 +103,14 @@ def ideal_card(clearance: Estimate, swept_volume: Estimate, at: LineStates) -> I
 
     Notes
     -----
-    ``VE = 1 - C (rho_d / rho_s - 1)`` and work = mass drawn in times isentropic rise of enthalpy: for a
-    closed isentropic card of a real gas the clearance gas takes and gives back the same work [1]_.
+    ``VE = 1 - C (rho_d / rho_s - 1)`` and work = mass drawn in times isentropic rise of enthalpy:
+    for a closed isentropic card of a real gas the clearance gas takes and gives back the same work
+    [1]_.
 
     References
     ----------
-    .. [1] Mass and energy balance of the steady cycle; the form in specific volumes stands in D. A. Mooney,
+    .. [1] Mass and energy balance of the steady cycle; the form in specific volumes stands in D.
+    A. Mooney,
        *Mechanical Engineering Thermodynamics*, chapter 19.
     """
     ratio = at.ln_density_ratio.exp()

@@ -6,9 +6,8 @@ from typing import NamedTuple
 
 import numpy as np
 
-from pvcard.card_set import CardSet
 from pvcard.closed_lines import PLACE, Problem
-from pvcard.kinematics import crank_angle_at, motion, travel_by_ratio
+from pvcard.kinematics import crank_angle_at, place, travel_by_ratio
 from pvcard.line_fit import CORNERS, Fit
 from pvcard.types import Floats
 from pvcard.uncertainty import Estimate, constant
@@ -18,7 +17,9 @@ class Crossing(NamedTuple):
     """A point where a fitted line meets a line pressure."""
 
     volume: Estimate  # (cards,) over the swept volume, clearance included
-    travel: Floats  # (cards,) of the piston there, may lie outside 0 to 1 for a line that is extended
+    travel: (
+        Floats  # (cards,) of the piston there, may lie outside 0 to 1 for a line that is extended
+    )
     crank_angle: Floats  # (cards,) deg, from the own dead centre
 
 
@@ -45,9 +46,7 @@ def corner_exponents(case: Problem, fit: Fit) -> Floats:
         At `CORNERS`. [-]
     """
     cards = case.cards
-    at = motion(
-        case.crank_angle[:, CORNERS], cards.rod_ratio[:, None], cards.rod_sign[:, None]
-    )
+    at = place(case.crank_angle[:, CORNERS], cards.rod_ratio[:, None], cards.rod_sign[:, None])
     clear = fit.state[:, PLACE["clearance"], None] + at.travel
     with np.errstate(divide="ignore", invalid="ignore"):
         heat = fit.linear.heat_slope[:, CORNERS] * clear / at.slope
@@ -75,8 +74,8 @@ def crossings(
 
     Notes
     -----
-    From the last node of a span the line goes on with its local exponent, over the 6 % of the pressure rise
-    that the span leaves out.
+    From the last node of a span the line goes on with its local exponent, over the 6 % of the
+    pressure rise that the span leaves out.
     """
     exponents = corner_exponents(case, fit)
     clearance = Estimate(fit.state[:, 0], fit.slopes[:, 0])
@@ -99,7 +98,7 @@ def _travel(case: Problem, node: int, inputs: int) -> Estimate:
     """Piston travel at a node; moves with the mark and the rod."""
     cards = case.cards
     sine, cosine = case.sine[:, node], case.cosine[:, node]
-    at = motion(case.crank_angle[:, node], cards.rod_ratio, cards.rod_sign)
+    at = place(case.crank_angle[:, node], cards.rod_ratio, cards.rod_sign)
     by_ratio = travel_by_ratio(sine, cosine, cards.rod_ratio, cards.rod_sign)[0] * cards.rod_ratio
     travel = constant(at.travel, inputs).depending_on("dead_centre", -at.slope * np.pi / 180)
     travel = travel.depending_on("stroke", by_ratio)
@@ -121,8 +120,8 @@ def polytropic_exponents(case: Problem, fit: Fit) -> tuple[Estimate, Estimate]:
 
     Notes
     -----
-    Straight lines by least squares through the nodes of each span. With the clearance, the mark and the
-    level the volumes or pressures of the nodes move; the derivatives follow from that.
+    Straight lines by least squares through the nodes of each span. With the clearance, the mark
+    and the level the volumes or pressures of the nodes move; the derivatives follow from that.
     """
     nodes = case.ln_pressure.shape[1] // 2
     pair = []
@@ -143,7 +142,7 @@ def _exponent_slopes(
     if not fit.slopes.shape[-1]:
         return np.zeros((len(spread), 0))
     cards = case.cards
-    at = motion(case.crank_angle[:, part], cards.rod_ratio[:, None], cards.rod_sign[:, None])
+    at = place(case.crank_angle[:, part], cards.rod_ratio[:, None], cards.rod_sign[:, None])
     clear = np.exp(fit.linear.ln_volume[:, part])
     residual = case.ln_pressure[:, part] + exponent[:, None] * fit.linear.ln_volume[:, part]
     residual = residual - residual.mean(-1, keepdims=True)
@@ -155,9 +154,7 @@ def _exponent_slopes(
         return result
 
     sine, cosine = case.sine[:, part], case.cosine[:, part]
-    by_ratio = travel_by_ratio(
-        sine, cosine, cards.rod_ratio[:, None], cards.rod_sign[:, None]
-    )[0]
+    by_ratio = travel_by_ratio(sine, cosine, cards.rod_ratio[:, None], cards.rod_sign[:, None])[0]
     rod = through_volume(by_ratio * cards.rod_ratio[:, None] / clear)
     mark = through_volume(-at.slope * (np.pi / 180) / clear)
     level = np.einsum("cn,cn->c", x, np.exp(-case.ln_pressure[:, part])) / spread
@@ -186,9 +183,9 @@ def stroke_fractions(
 
     Notes
     -----
-    Lines are the polytropes of `polytropic_exponents`, through the whole span. Lines carried on with the
-    local exponent, wall heat included, meet the pressures elsewhere; that difference counts as the
-    half width of a uniform distribution (JCGM 100, 4.3.7).
+    Lines are the polytropes of `polytropic_exponents`, through the whole span. Lines carried on
+    with the local exponent, wall heat included, meet the pressures elsewhere; that difference
+    counts as the half width of a uniform distribution (JCGM 100, 4.3.7).
     """
     nodes = case.ln_pressure.shape[1] // 2
     pair = []

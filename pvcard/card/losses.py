@@ -8,8 +8,8 @@ import numpy as np
 
 from pvcard.card.lines import Crossing, Crossings
 from pvcard.card.work import Running, integral_at, outward_angle
-from pvcard.card_set import CardSet, Turning
-from pvcard.kinematics import motion
+from pvcard.card_set import CardSet, Turning, curvature
+from pvcard.kinematics import place
 from pvcard.types import Floats
 from pvcard.uncertainty import Estimate, constant
 
@@ -58,9 +58,7 @@ def discharge_span(at: Crossings) -> Span:
     return Span(first.crank_angle, last.crank_angle, _clipped(first), _clipped(last))
 
 
-def trace_integral(
-    cards: CardSet, turn: Turning, running: Running, span: Span
-) -> Floats:
+def trace_integral(cards: CardSet, turn: Turning, running: Running, span: Span) -> Floats:
     """Integral of ``p dx`` along the trace over a stretch.
 
     Parameters
@@ -103,12 +101,13 @@ def valve_loss(
     Returns
     -------
     loss : (cards,)
-        ``integral of (p_line - p) dV``, signed: on the discharge side ``dV`` is negative and the same
-        integral is ``(p - p_line) (-dV)``. [J]
+        ``integral of (p_line - p) dV``, signed: on the discharge side ``dV`` is negative and the
+        same integral is ``(p - p_line) (-dV)``. [J]
 
     Notes
     -----
-    At both ends trace and line pressure meet, so that moving the ends changes nothing of first order.
+    At both ends trace and line pressure meet, so that moving the ends changes nothing of first
+    order.
     """
     swept = cards.swept_volume
     width = span.last_travel - span.first_travel
@@ -131,10 +130,13 @@ def _by_mark(cards: CardSet, turn: Turning, span: Span, line_pressure: Floats) -
     """``- integral of (p_line - p) x''`` over the stretch, per degree."""
     grid = cards.crank_angle
     first, last = span.first_angle[:, None], span.last_angle[:, None]
-    inside = np.where(last > first, (grid >= first) & (grid <= last), (grid >= first) | (grid <= last))
+    inside = np.where(
+        last > first, (grid >= first) & (grid <= last), (grid >= first) | (grid <= last)
+    )
     gap = (line_pressure[:, None] - cards.pressure) * inside
-    total = np.einsum("cs,cs,s->c", gap, turn.motion.curvature, turn.weight, optimize=True)
-    return -total * np.pi / 180
+    gap *= turn.weight
+    total: Floats = np.einsum("cs,cs->c", gap, curvature(cards, turn))
+    return -total * (np.pi / 180)
 
 
 class FlowIntegral(NamedTuple):
@@ -168,7 +170,7 @@ def open_part(
     """
     suction = opening < 180
     end = np.where(suction, 180.0, 360.0)
-    travel = motion(opening, cards.rod_ratio, cards.rod_sign).travel
+    travel = place(opening, cards.rod_ratio, cards.rod_sign).travel
     span = Span(opening, np.where(suction, 180.0, 0.0), travel, np.where(suction, 1.0, 0.0))
     integral = trace_integral(cards, turn, running, span)
     swept = cards.swept_volume
@@ -179,7 +181,7 @@ def open_part(
     points, weights = np.polynomial.legendre.leggauss(16)
     half = (end - opening) / 2
     angle = opening[:, None] + half[:, None] * (points + 1)
-    speed = np.abs(motion(angle, cards.rod_ratio[:, None], cards.rod_sign[:, None]).slope)
+    speed = np.abs(place(angle, cards.rod_ratio[:, None], cards.rod_sign[:, None]).slope)
     cube = np.einsum("cn,n->c", speed**3, weights) * half * np.pi / 180
     return FlowIntegral(loss, cube)
 
@@ -214,8 +216,8 @@ def flow_area(
 
     Notes
     -----
-    ``dp = rho / 2 (Q / area)^2`` with the piston's displacement as flow, integrated over the stroke, with
-    the first term of the expansibility of a nozzle, ``1 - 3 dp / (4 k p)``.
+    ``dp = rho / 2 (Q / area)^2`` with the piston's displacement as flow, integrated over the
+    stroke, with the first term of the expansibility of a nozzle, ``1 - 3 dp / (4 k p)``.
     """
     swept = cards.swept_volume
     speed = 2 * np.pi * cards.speed

@@ -23,9 +23,11 @@ from pvcard.uncertainty import INDEX, INPUTS, Estimate, constant
 from pvcard.windows import closed_windows
 
 Columns = dict[str, Estimate]
-CHUNK = 128  # cards worked on at once, so that a batch stays in the processor's cache
+CHUNK = 512  # cards worked on at once, so that a batch stays in the processor's cache
 AREA_MODEL = 0.08  # relative: one constant area for a plate that moves (common practice, no source)
-PULSATION = 0.005  # of line pressure: how far the mean at an open valve may lie off (no source either)
+PULSATION = (
+    0.005  # of line pressure: how far the mean at an open valve may lie off (no source either)
+)
 
 
 class Geometry(NamedTuple):
@@ -147,7 +149,9 @@ def _columns(
     columns.update(_losses(cards, turn, at, events, states, noise, size, power, case))
     columns.update(capacity(cards, case, fit, at, states, size, work))
     gaps = ("suction_valve_loss_kW", "discharge_valve_loss_kW")
-    columns["other_loss_kW"] = power - columns["ideal_power_kW"] - columns[gaps[0]] - columns[gaps[1]]
+    columns["other_loss_kW"] = (
+        power - columns["ideal_power_kW"] - columns[gaps[0]] - columns[gaps[1]]
+    )
     return columns
 
 
@@ -162,7 +166,8 @@ def _conditions(
     yield "suction_temperature_degC", states.suction_temperature - 273.15
     yield "discharge_temperature_degC", discharge - 273.15
     yield "pressure_ratio", states.discharge_pressure / states.suction_pressure
-    # The relative error of the exponent is an input of its own: it is not seen in the densities alone.
+    # The relative error of the exponent is an input of its own: it is not seen in the densities
+    # alone.
     yield "isentropic_exponent", states.exponent
     yield "discharge_temperature_excess_K", discharge - states.temperature
 

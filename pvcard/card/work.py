@@ -6,17 +6,15 @@ from typing import NamedTuple
 
 import numpy as np
 
-from pvcard.card_set import CardSet, Turning
-from pvcard.kinematics import crank_angle_at, motion, travel_by_ratio
+from pvcard.card_set import CardSet, Turning, curvature
+from pvcard.kinematics import crank_angle_at, place, travel_by_ratio
 from pvcard.types import Floats
 from pvcard.uncertainty import Estimate, constant
 
 _RADIAN = np.pi / 180
 
 
-def indicated_work(
-    cards: CardSet, turn: Turning, white_noise: Floats, inputs: int
-) -> Estimate:
+def indicated_work(cards: CardSet, turn: Turning, white_noise: Floats, inputs: int) -> Estimate:
     """Work taken in per revolution, the area of each closed loop.
 
     Parameters
@@ -34,13 +32,14 @@ def indicated_work(
 
     Notes
     -----
-    ``W = - closed integral of p (dV/d theta) d theta`` with the exact ``dV/d theta``: over a closed turn
-    the trapezoid rule in the angle converges faster than in the volume [1]_. The difference from every second
-    sample, a third of it, is carried as the error of the spacing.
+    ``W = - closed integral of p (dV/d theta) d theta`` with the exact ``dV/d theta``: over a
+    closed turn the trapezoid rule in the angle converges faster than in the volume [1]_. The
+    difference from every second sample, a third of it, is carried as the error of the spacing.
 
     References
     ----------
-    .. [1] L. N. Trefethen and J. A. C. Weideman, "The exponentially convergent trapezoidal rule", SIAM
+    .. [1] L. N. Trefethen and J. A. C. Weideman, "The exponentially convergent trapezoidal rule",
+    SIAM
        Review 56 (2014) 385.
     """
     slope = turn.motion.slope
@@ -50,7 +49,7 @@ def indicated_work(
     work = -loop * swept
     if not inputs:
         return constant(work, 0)
-    by_angle = np.einsum("cs,cs->c", weighted, turn.motion.curvature) * swept * _RADIAN
+    by_angle = np.einsum("cs,cs->c", weighted, curvature(cards, turn)) * swept * _RADIAN
     by_ratio = -np.einsum("cs,cs->c", weighted, _slope_by_ratio(cards, turn)) * swept
     by_ratio *= cards.rod_ratio
     estimate = constant(work, inputs).depending_on("dead_centre", by_angle)
@@ -77,7 +76,8 @@ def _spacing_error(cards: CardSet, turn: Turning, loop: Floats) -> Floats:
     coarse = np.einsum(
         "cs,cs,s->c", cards.pressure[:, ::2], turn.motion.slope[:, ::2], step, optimize=True
     )
-    return np.abs(coarse - loop) / 3
+    error: Floats = np.abs(coarse - loop) / 3
+    return error
 
 
 class Running(NamedTuple):
@@ -134,7 +134,7 @@ def integral_at(cards: CardSet, turn: Turning, running: Running, crank_angle: Fl
     step = grid[left + 1] - grid[left]
     share = (known - grid[left]) / step
     there = pressure + share * (cards.pressure[row, left + 1] - pressure)
-    travel = motion(known, cards.rod_ratio, cards.rod_sign).travel
+    travel = place(known, cards.rod_ratio, cards.rod_sign).travel
     part = (pressure + there) / 2 * (travel - turn.motion.travel[row, left])
     return np.where(np.isfinite(crank_angle), running.total[row, left] + part, np.nan)
 

@@ -10,16 +10,16 @@ from pvcard.machine import Cylinder, Machine
 Row = dict[str, Any]
 
 _HOT = (
-    "Hot gas and surfaces. The maker's limit, local codes and a competent, licensed person decide whether "
-    "the machine may run on."
+    "Hot gas and surfaces. The maker's limit, local codes and a competent, licensed person decide "
+    "whether the machine may run on."
 )
 _LOAD = (
-    "Overload can hurt driver and running gear. The maker's limits prevail over this estimate; a competent "
-    "person decides."
+    "Overload can hurt driver and running gear. The maker's limits prevail over this estimate; a "
+    "competent person decides."
 )
 _REVERSAL = (
-    "An end that does not compress can take load reversal away from the crosshead pin. Have the rod load of "
-    "this load step confirmed against the maker's limits."
+    "An end that does not compress can take load reversal away from the crosshead pin. Have the rod "
+    "load of this load step confirmed against the maker's limits."
 )
 
 
@@ -39,7 +39,9 @@ def findings_of(
     list of dict
         Findings of the contract, worst first.
     """
-    found = [_unloaded(row, idle[key]) for row in ends if (key := (row["cylinder"], row["end"])) in idle]
+    found = [
+        _unloaded(row, idle[key]) for row in ends if (key := (row["cylinder"], row["end"])) in idle
+    ]
     for row in ends:
         cylinder = machine.cylinder(row["cylinder"])
         found.extend(_hot(cylinder, row, found))
