@@ -14,7 +14,7 @@ import numpy as np
 from pvcard.gas import Gas
 from pvcard.gas_table import GasTable
 from pvcard.kinematics import Place, curvature_from_sine, place_from_sine
-from pvcard.types import Floats
+from pvcard.types import Floats, Integers
 
 
 @dataclass(frozen=True, eq=False)
@@ -52,6 +52,16 @@ class CardSet:
             if one.name not in ("crank_angle", "gas", "table")
         }
         return CardSet(crank_angle=self.crank_angle, gas=self.gas, table=self.table, **cut)
+
+    def rows(self, rows: Integers) -> CardSet:
+        """Return some cards without their traces."""
+        cut = {
+            one.name: getattr(self, one.name)[rows]
+            for one in fields(self)
+            if one.name not in ("crank_angle", "pressure", "gas", "table")
+        }
+        pressure = self.pressure[rows, :0]
+        return CardSet(self.crank_angle[:0], pressure, gas=self.gas, table=self.table, **cut)
 
 
 class Turning(NamedTuple):

@@ -29,7 +29,7 @@ from pvcard.card_set import CardSet, Turning
 from pvcard.gas_table import IsentropicSlopes, TableState
 from pvcard.heat import annand_nusselt
 from pvcard.kinematics import Place, place_from_sine, travel_by_ratio
-from pvcard.types import Floats
+from pvcard.types import Floats, Integers
 from pvcard.windows import NODES, Windows, span_means
 
 PARAMETERS = (
@@ -138,6 +138,36 @@ def problem(cards: CardSet, turn: Turning, windows: Windows, known: References) 
     ln_pressure = bins.mean - exponent * np.log(guess + at.travel)
     return Problem(
         cards, known, windows, sine, cosine, bins.crank_angle, at, ln_pressure, bins.width
+    )
+
+
+def taken(case: Problem, rows: Integers) -> Problem:
+    """Some cards of a problem, for further steps of a fit; their traces are left behind.
+
+    Parameters
+    ----------
+    case : Problem
+    rows : numbers of the cards
+
+    Returns
+    -------
+    Problem
+    """
+    known = case.references
+    return Problem(
+        case.cards.rows(rows),
+        References(
+            TableState(*(one[rows] for one in known.suction)),
+            IsentropicSlopes(*(one[rows] for one in known.path)),
+            known.heat_rate[rows],
+        ),
+        case.windows.rows(rows),
+        case.sine[rows],
+        case.cosine[rows],
+        case.crank_angle[rows],
+        Place(*(one[rows] for one in case.declared)),
+        case.ln_pressure[rows],
+        case.width[rows],
     )
 
 

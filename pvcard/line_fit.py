@@ -15,7 +15,15 @@ from typing import NamedTuple
 import numpy as np
 
 from pvcard.card_set import CardSet
-from pvcard.closed_lines import PARAMETERS, PLACE, Linear, Problem, linearise, start_clearance
+from pvcard.closed_lines import (
+    PARAMETERS,
+    PLACE,
+    Linear,
+    Problem,
+    linearise,
+    start_clearance,
+    taken,
+)
 from pvcard.types import Booleans, Floats
 from pvcard.uncertainty import FIT_NOISE, INDEX, INPUTS
 from pvcard.windows import NODES
@@ -43,9 +51,19 @@ CORRELATION_DEG = 8.0  # over which that misfit is alike
 GAS_EXCHANGE = (
     2.2  # wall heat while gas flows in, over that of closed valves: Woschni's (6.18 / 2.28)^0.8
 )
-ITERATIONS = 3
+ITERATIONS = 12  # at most; most cards settle after four
 CORNERS = (0, NODES - 1, NODES, 2 * NODES - 1)  # first and last node of compression, of expansion
-_HEAT_STEP, _HEAT_RANGE = 0.7, np.log(4.0)
+# Per free parameter: steps below which a card has settled, and largest steps.
+_SETTLED = np.array([5e-4, 2e-3, 2e-3, 0.1, 0.05, 0.1, 1.0, 1.0])
+_LARGEST = np.array([0.05, 1.0, 1.0, 0.7, 0.3, 0.5, 8.0, 8.0])
+_RANGES = (
+    ("clearance", 0.002, 3.0),
+    ("heat", -np.log(5.0), np.log(5.0)),
+    ("wall", -0.5, 1.5),
+    ("shape", -0.95, 2.0),
+    ("warming", -30.0, 60.0),
+    ("clearance_gas", -40.0, 40.0),
+)
 
 
 class Fit(NamedTuple):
@@ -117,37 +135,50 @@ def fit_lines(
 def _solve(
     case: Problem, prior_u: Floats, white_noise: Floats
 ) -> tuple[Floats, Linear, _Priors, Floats]:
-    cards = case.cards
-    state = np.zeros((len(cards.pressure), len(PARAMETERS)))
-    state[:, PLACE["clearance"]] = start_clearance(cards)
-    state[:, PLACE["wall"]] = WALL_PRIOR[0]
+    """Gauss-Newton from the declared values; cards that have settled are left alone."""
+    state = np.zeros((len(prior_u), len(PARAMETERS)))
     priors = _priors(case, prior_u)
-    state[:, PLACE["warming"]] = np.nan_to_num(priors.balance)
-    state[:, PLACE["clearance_gas"]] = priors.mean[:, 7]
+    state[:, : len(FREE)] = priors.mean
+    state[:, PLACE["warming"]] = -_imbalance(priors, state)
     weight = _weights(case, white_noise)
-    free = slice(0, len(FREE))
+    moving = np.flatnonzero(case.windows.found)
+    part, own = case, priors
     for _ in range(ITERATIONS):
-        linear = linearise(case, state, everything=False)
-        information = _information(linear, weight, priors)
-        pull = np.einsum("cnp,cn->cp", linear.jacobian[..., free], weight * linear.residual)
-        gap = priors.balance + np.einsum("cp,cp->c", priors.row, state[:, free])
-        pull += priors.row * (gap / WARMING_PRIOR**2)[:, None]
-        pull += priors.weight * (state[:, free] - priors.mean)
-        step = _solved(information, pull[..., None])[..., 0]
-        state[:, free] = _bounded(state[:, free], step)
+        if not len(moving):
+            break
+        if len(moving) < len(part.ln_pressure):
+            part, own = taken(case, moving), _Priors(*(one[moving] for one in priors))
+        linear = linearise(part, state[moving], everything=False)
+        step = _step(linear, weight[moving], own, state[moving])
+        state[moving, : len(FREE)] -= step
+        _keep_within(state)
+        settled = np.all(np.abs(step) < _SETTLED, axis=-1) | ~np.all(np.isfinite(step), axis=-1)
+        moving = moving[~settled]
     linear = linearise(case, state)
     return state, linear, priors, _information(linear, weight, priors)
 
 
-def _bounded(state: Floats, step: Floats) -> Floats:
-    result = state - step
-    heat = PLACE["heat"]
-    moved = np.clip(step[:, heat], -_HEAT_STEP, _HEAT_STEP)
-    result[:, heat] = np.clip(state[:, heat] - moved, -_HEAT_RANGE, _HEAT_RANGE)
-    result[:, 0] = np.clip(result[:, 0], state[:, 0] / 3, 3 * state[:, 0] + 0.1)
-    result[:, PLACE["wall"]] = np.clip(result[:, PLACE["wall"]], -0.5, 1.5)
-    result[:, PLACE["shape"]] = np.clip(result[:, PLACE["shape"]], -0.95, 2.0)
+def _imbalance(priors: _Priors, state: Floats) -> Floats:
+    """How far the heat balance of the suction stroke is missed. [K]."""
+    result: Floats = priors.balance + np.einsum("cp,cp->c", priors.row, state[:, : len(FREE)])
     return result
+
+
+def _step(linear: Linear, weight: Floats, priors: _Priors, state: Floats) -> Floats:
+    """Step of the free parameters to be taken off, no larger than the model is linear."""
+    free = slice(0, len(FREE))
+    information = _information(linear, weight, priors)
+    pull = np.einsum("cnp,cn->cp", linear.jacobian[..., free], weight * linear.residual)
+    pull += priors.row * (_imbalance(priors, state) / WARMING_PRIOR**2)[:, None]
+    pull += priors.weight * (state[:, free] - priors.mean)
+    return np.clip(_solved(information, pull[..., None])[..., 0], -_LARGEST, _LARGEST)
+
+
+def _keep_within(state: Floats) -> None:
+    """Hold parameters within what is physically possible."""
+    for name, lowest, highest in _RANGES:
+        column = state[:, PLACE[name]]
+        np.clip(column, lowest, highest, out=column)
 
 
 def _solved(matrix: Floats, right: Floats) -> Floats:

@@ -16,7 +16,7 @@ from pvcard.types import Booleans, Floats, Integers
 
 LOWER_SHARE, UPPER_SHARE = 0.06, 0.94  # of the rise from suction to discharge pressure
 FEWEST_SAMPLES = 5
-NODES = 20  # per span
+NODES = 12  # per span
 
 
 class Windows(NamedTuple):
@@ -27,6 +27,16 @@ class Windows(NamedTuple):
     expansion_first: Integers
     expansion_last: Integers
     found: Booleans
+
+    def rows(self, rows: Integers) -> Windows:
+        """Return those of some cards."""
+        return Windows(
+            self.compression_first[rows],
+            self.compression_last[rows],
+            self.expansion_first[rows],
+            self.expansion_last[rows],
+            self.found[rows],
+        )
 
 
 def closed_windows(

@@ -12,7 +12,6 @@ from pvcard.uncertainty import INDEX, INPUTS, UNIT_INPUTS
 
 NATURAL_GAS = {"methane": 0.92, "ethane": 0.05, "nitrogen": 0.02, "carbon_dioxide": 0.01}
 SAMPLES = 720
-_EXPONENT = 1.29
 
 
 def invented_cards(count: int, seed: int = 1) -> CardSet:
@@ -27,7 +26,12 @@ def invented_cards(count: int, seed: int = 1) -> CardSet:
     share = np.where(sign < 0, 0.04, 0.0)
     ratio, clearance = rng.uniform(0.18, 0.25, count), rng.uniform(0.1, 0.2, count)
     grid = np.arange(SAMPLES) * 360.0 / SAMPLES
-    pressure = _pressures(grid, ratio, sign, clearance, low, high, rng)
+    temperature = rng.uniform(290, 310, count)
+    shares = np.linspace(-0.1, 1.1, 80)
+    along = low[:, None] * (high / low)[:, None] ** shares
+    path = table.isentropic(low[:, None], temperature[:, None], along)
+    lines = np.log(path.density2 / path.density1), np.log(along)
+    pressure = _pressures(grid, ratio, sign, clearance, low, high, lines, rng)
     return CardSet(
         crank_angle=grid,
         pressure=pressure,
@@ -40,7 +44,7 @@ def invented_cards(count: int, seed: int = 1) -> CardSet:
         clearance=clearance + rng.normal(0, 0.01, count),
         suction_pressure=low,
         discharge_pressure=high,
-        suction_temperature=rng.uniform(290, 310, count),
+        suction_temperature=temperature,
         discharge_temperature=rng.uniform(370, 400, count),
         speed=rng.uniform(5, 15, count),
         gas=gas,
@@ -55,13 +59,21 @@ def _pressures(
     clearance: Floats,
     low: Floats,
     high: Floats,
+    lines: tuple[Floats, Floats],
     rng: np.random.Generator,
 ) -> Floats:
     travel = motion(grid, ratio[:, None], sign[:, None]).travel
     volume = clearance[:, None] + travel
     suction, discharge = low[:, None], high[:, None]
-    expansion = discharge * (clearance[:, None] / volume) ** _EXPONENT
-    compression = suction * ((1 + clearance[:, None]) / volume) ** _EXPONENT
+    # Isentropes of the real gas; a little warmed and cooled, as walls do.
+    full = np.log((1 + clearance[:, None]) / volume)
+    left = np.log(clearance[:, None] / volume)
+    compression, expansion = np.empty_like(volume), np.empty_like(volume)
+    for row, (ln_density, ln_pressure) in enumerate(zip(*lines)):
+        top = np.interp(np.log(high[row]), ln_pressure, ln_density)
+        compression[row] = np.interp(full[row], ln_density, ln_pressure) - 0.001 * full[row]
+        expansion[row] = np.interp(left[row] + top, ln_density, ln_pressure) + 0.002 * left[row]
+    compression, expansion = np.exp(compression), np.exp(expansion)
     flow = np.abs(np.sin(np.radians(grid)))
     ripple = 0.01 * np.sin(np.radians(grid) * 9)
     inlet = suction * (1 - 0.03 * flow**2 + ripple)
