@@ -28,6 +28,9 @@ _OPENING_LEVEL = 1e-3  # least departure in ln p that counts at an opening
 _LEVELS_APART = 8.0  # second level over first; a growth with the third power takes twice the time
 _CLOSING_SLOPE = 1.5e-4  # least slope of the departure in ln p per degree that counts at a closing
 _CLOSING_BEND = 1.5e-5  # least second derivative of it, per degree squared
+# What a misfit inside the spans, mostly ringing, may add outside them: times the misfit in ln p,
+# per degree, and per degree squared (of a ringing of some 25 degrees; no source).
+_MISFITS, _MISFIT_SLOPE, _MISFIT_BEND = 4.0, 0.25, 0.06
 _SIGMAS = 6.0  # of white noise, below which nothing counts
 
 
@@ -45,6 +48,13 @@ class Events(NamedTuple):
     suction_closing: Event
     discharge_opening: Event
     discharge_closing: Event
+
+
+class _Noise(NamedTuple):
+    """What a departure must exceed, relative to pressure; each (cards,)."""
+
+    white: Floats  # standard deviation of single samples
+    misfit: Floats  # rms of what the model leaves within the spans
 
 
 class _Departure(NamedTuple):
@@ -83,11 +93,12 @@ def valve_events(case: Problem, fit: Fit, white_noise: Floats) -> Events:
     expansion_start = _departure(
         case, fit, 2, windows.expansion_first, -1, _CLOSING_REACH_DEG, (0, half)
     )
+    noise = _Noise(white_noise, fit.misfit)
     return Events(
-        _opening(expansion_end, +1.0, white_noise),
-        _closing(compression_start, white_noise),
-        _opening(compression_end, -1.0, white_noise),
-        _closing(expansion_start, white_noise),
+        _opening(expansion_end, +1.0, noise),
+        _closing(compression_start, noise),
+        _opening(compression_end, -1.0, noise),
+        _closing(expansion_start, noise),
     )
 
 
@@ -205,11 +216,12 @@ def _crossing(departure: _Departure, size: Floats, level: Floats) -> tuple[Float
     return angle, seen
 
 
-def _opening(departure: _Departure, sign: float, white_noise: Floats) -> Event:
+def _opening(departure: _Departure, sign: float, noise: _Noise) -> Event:
     size = sign * departure.value
     sustained = size.copy()
     sustained[:, :-1] = np.minimum(size[:, :-1], size[:, 1:])  # one stray sample is not an opening
-    level = np.maximum(_OPENING_LEVEL, _SIGMAS * white_noise)
+    level = np.maximum(_OPENING_LEVEL, _SIGMAS * noise.white)
+    level = np.maximum(level, _MISFITS * noise.misfit)
     early, seen = _crossing(departure, sustained, level)
     late, grown = _crossing(departure, sustained, _LEVELS_APART * level)
     back = np.where(grown, np.clip(late - early, 0, 3.0), 0.5)
@@ -218,26 +230,28 @@ def _opening(departure: _Departure, sign: float, white_noise: Floats) -> Event:
     return Event(angle, np.hypot(0.3 + 0.3 * back, spacing / 3))
 
 
-def _closing(departure: _Departure, white_noise: Floats) -> Event:
+def _closing(departure: _Departure, noise: _Noise) -> Event:
     """Last angle before the span at which the departure still bends or runs away."""
     spacing = np.abs(departure.crank_angle[:, 2] - departure.crank_angle[:, 1])
     step = float(np.nanmedian(spacing))
-    reach = _half_width(float(np.nanmedian(white_noise)), step)
+    reach = _half_width(float(np.nanmedian(noise.white)), step)
     slope, bend = _local_parabola(departure.value, reach)
     slope, bend = np.abs(slope) / step, np.abs(bend) / step**2
     offsets = np.arange(-reach, reach + 1.0)
     centred = offsets**2 - np.mean(offsets**2)
-    noise_slope = white_noise / np.sqrt(np.sum(offsets**2)) / step
-    noise_bend = 2 * white_noise / np.sqrt(np.sum(centred**2)) / step**2
+    noise_slope = noise.white / np.sqrt(np.sum(offsets**2)) / step
+    noise_bend = 2 * noise.white / np.sqrt(np.sum(centred**2)) / step**2
     slope_level = np.maximum(_CLOSING_SLOPE, _SIGMAS * noise_slope)
+    slope_level = np.maximum(slope_level, _MISFIT_SLOPE * noise.misfit)
     bend_level = np.maximum(_CLOSING_BEND, _SIGMAS * noise_bend)
+    bend_level = np.maximum(bend_level, _MISFIT_BEND * noise.misfit)
     size = np.maximum(slope / slope_level[:, None], bend / bend_level[:, None])
     inside = departure.inside.copy()
     inside[:, :reach] = False
     angle, seen = _crossing(departure._replace(inside=inside), size, np.ones(len(size)))
     blurred = np.where(seen, angle - reach * step, np.nan)
     widened = bend_level / _CLOSING_BEND  # the level that noise asks for, over the least one
-    return Event(blurred, np.hypot(1.2, reach * step / 2) * np.sqrt(np.minimum(widened, 9.0)))
+    return Event(blurred, np.hypot(1.2, reach * step / 2) * np.sqrt(np.minimum(widened, 100.0)))
 
 
 def _half_width(white_noise: float, spacing: float) -> int:

@@ -23,8 +23,8 @@ _LATER = {
 }
 _RUNNING_GEAR = "this version of pvcard does not compute rod loads and torque"
 _FLAT = (
-    "the trace does not run from suction to discharge pressure and back: the end does not compress, "
-    "or a line pressure or unit is wrong"
+    "the trace does not run from suction to discharge pressure and back: the end does not "
+    "compress, or a line pressure or unit is wrong"
 )
 # Columns that need both closed spans of the card.
 _CLOSED = (

@@ -25,9 +25,10 @@ from pvcard.windows import closed_windows
 Columns = dict[str, Estimate]
 CHUNK = 512  # cards worked on at once, so that a batch stays in the processor's cache
 AREA_MODEL = 0.08  # relative: one constant area for a plate that moves (common practice, no source)
-PULSATION = (
-    0.005  # of line pressure: how far the mean at an open valve may lie off (no source either)
-)
+# Of line pressure: how far its mean at an open valve may lie off the mean of the line (no source).
+PULSATION = 0.005
+# Of a peak beyond line pressure: what the ringing of an unknown passage may add to it (no source).
+RINGING = 0.2
 
 
 class Geometry(NamedTuple):
@@ -173,13 +174,14 @@ def _conditions(
 
 
 def _peaks(cards: CardSet, noise: Floats, inputs: int) -> Iterator[tuple[str, Estimate]]:
-    for name, value in (
-        ("pressure_max_bar", cards.pressure.max(-1)),
-        ("pressure_min_bar", cards.pressure.min(-1)),
+    for name, value, line in (
+        ("pressure_max_bar", cards.pressure.max(-1), cards.discharge_pressure),
+        ("pressure_min_bar", cards.pressure.min(-1), cards.suction_pressure),
     ):
         estimate = constant(value, inputs).depending_on("pressure_level", -1.0)
         estimate = estimate.depending_on("pressure_gain", value)
-        yield name, estimate.depending_on("noise_peaks", noise * value) / 1e5
+        beyond = RINGING * np.abs(value - line)
+        yield name, estimate.depending_on("noise_peaks", np.hypot(noise * value, beyond)) / 1e5
 
 
 def _losses(

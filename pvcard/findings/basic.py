@@ -18,8 +18,8 @@ _LOAD = (
     "competent person decides."
 )
 _REVERSAL = (
-    "An end that does not compress can take load reversal away from the crosshead pin. Have the rod "
-    "load of this load step confirmed against the maker's limits."
+    "An end that does not compress can take load reversal away from the crosshead pin. Have the "
+    "rod load of this load step confirmed against the maker's limits."
 )
 
 
