@@ -21,7 +21,7 @@ from pvcard.units import display_unit
 
 Row = dict[str, Any]
 _COLUMNS_ACROSS = 4
-_GROUPS = (
+GROUPS = (
     ("conditions", "Conditions"),
     ("power", "Power"),
     ("card", "Card"),
@@ -226,7 +226,7 @@ def _ends_block(rows: list[Row], units: str) -> list[str]:
     label = 46
     titles = "".join(f"{row['cylinder']} {row['end']}"[: width - 1].rjust(width) for row in rows)
     lines = [" " * label + titles]
-    for group, title in _GROUPS:
+    for group, title in GROUPS:
         block = []
         for quantity in QUANTITIES.values():
             if quantity.group != group or all(row[quantity.column] is None for row in rows):
