@@ -11,7 +11,14 @@ import pvcard
 from pvcard.analysis.batch import Job, Outcome, measure_jobs
 from pvcard.analysis.end_traces import EndTrace, Gathered, gather
 from pvcard.analysis.load_steps import Seen, StepChoice, choose_step, steps_of
-from pvcard.analysis.rows import Row, cylinder_row, end_row, estimate_of, open_row
+from pvcard.analysis.rows import (
+    Row,
+    cylinder_row,
+    end_row,
+    estimate_of,
+    explain_idle,
+    open_row,
+)
 from pvcard.analysis.totals import total_rows
 from pvcard.analysis.views import card_view
 from pvcard.findings import findings_of
@@ -162,7 +169,9 @@ def _result(
         row = end_row(job, outcome, choice.name)
         ends.append((row, outcome))
         if _idle(job):
-            idle[row["cylinder"], row["end"]] = _why_idle(machine, job, choice)
+            why = _why_idle(machine, job, choice)
+            idle[row["cylinder"], row["end"]] = why
+            explain_idle(row, f"the end does not compress: {why}")
         repairs.extend(_repairs_of(job, outcome, row))
         if with_views:
             views[row["cylinder"], row["end"]] = card_view(job, outcome, row)

@@ -97,6 +97,20 @@ def open_row(cylinder: str, end: str, stage: int, load_step: str | None, reason:
     return row
 
 
+def explain_idle(row: Row, reason: str) -> None:
+    """Say of an idle end why it lacks figures.
+
+    Parameters
+    ----------
+    row : dict
+        Changed in place: rows are made here.
+    reason : one sentence
+    """
+    for column, text in row["reason"].items():
+        if text == _FLAT:
+            row["reason"][column] = reason
+
+
 def put(row: Row, column: str, value: float | None, u: float | None) -> None:
     """Set a column and its uncertainty; None for anything that is not a finite number.
 

@@ -246,8 +246,10 @@ def _tables(one: RecordingResult, units: str) -> list[str]:
     head = "".join(f"<th>{escape(row['cylinder'])} {escape(row['end'])}</th>" for row in rows)
     lines = [
         "<h2>Every quantity</h2><p class=soft>Value with its standard uncertainty (68 % of cases "
-        "lie within it); pressures are absolute; angles count from each end's own dead centre of least "
-        "volume.</p><div class=scroll><table><thead><tr><th></th>" + head + "</tr></thead><tbody>"
+        "lie within it); pressures are absolute; angles count from each end's own dead centre of "
+        "least volume.</p><div class=scroll><table><thead><tr><th></th>"
+        + head
+        + "</tr></thead><tbody>"
     ]
     for group, title in GROUPS:
         block = []

@@ -122,7 +122,7 @@ def draw_log_lines(ax: Axes, views: Sequence[CardView], scales: Scales) -> Axes:
         pressure = scales.pressure * view.pressure
         positive = np.where(pressure > 0, pressure, np.nan)
         ax.plot(_closed(relative), _closed(positive), color=colour, lw=1.0, alpha=0.55)
-        label = f"{view.end} end: fitted closed lines"
+        label = f"{view.end} end, fitted"
         for v, p in (
             (view.compression_volume, view.compression_pressure),
             (view.expansion_volume, view.expansion_pressure),
@@ -136,11 +136,11 @@ def draw_log_lines(ax: Axes, views: Sequence[CardView], scales: Scales) -> Axes:
         yscale="log",
         xlabel="Gas volume [% of swept volume]",
         ylabel=f"Pressure [{scales.pressure_label}]",
-        title=f"{views[0].cylinder}: closed lines, logarithmic",
+        title=f"{views[0].cylinder}: closed lines",
     )
     _plain_ticks(ax, views, scales)
     if any(len(view.compression_volume) for view in views):
-        ax.legend(loc="upper right")
+        ax.legend(loc="lower right", bbox_to_anchor=(1.0, 0.99), ncols=2)
     return ax
 
 
@@ -261,10 +261,17 @@ def draw_power_split(ax: Axes, rows: Sequence[Row], scales: Scales) -> Axes:
     ax.invert_yaxis()
     ax.axvline(0, color=LINE, lw=0.8)
     ax.set(xlabel=f"Power [{scales.power_label}]", title="Where the indicated power goes")
-    ax.legend(
-        loc="upper center", bbox_to_anchor=(0.5, -0.16 - 0.12 * 4 / max(len(rows), 2)), ncols=3
-    )
+    _legend_below(ax)
     return ax
+
+
+def _legend_below(ax: Axes) -> None:
+    """Put the legend under the label of the axis, however tall the axes are."""
+    figure = ax.figure
+    tall = (
+        ax.get_position().height * figure.get_figheight() if hasattr(figure, "get_figheight") else 1
+    )
+    ax.legend(loc="upper center", bbox_to_anchor=(0.45, -0.42 / tall), ncols=3)
 
 
 def _closed(values: Floats) -> Floats:

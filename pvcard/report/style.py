@@ -23,6 +23,7 @@ RC: dict[str, Any] = {
     "axes.spines.top": False,
     "axes.spines.right": False,
     "axes.grid": True,
+    "axes.axisbelow": True,
     "grid.color": FAINT,
     "grid.linewidth": 0.6,
     "xtick.color": INK,
