@@ -133,14 +133,8 @@ def place_from_sine(
     """
     root = _rod_root(sine, ratio)
     half = 0.5 * rod_sign * ratio
-    share = half / root
-    share *= cosine
-    share += 0.5
-    slope: Floats = share
-    slope *= sine
-    root += 1
-    travel: Floats = np.divide(half * np.square(sine), root, out=root)
-    travel += 0.5 * (1 - cosine)
+    slope: Floats = (half / root * cosine + 0.5) * sine
+    travel: Floats = half * np.square(sine) / (1 + root) + 0.5 * (1 - cosine)
     return Place(travel, slope)
 
 
