@@ -85,6 +85,7 @@ class _Priors(NamedTuple):
     # (cards, free): the heat balance of the suction stroke, linear in the free parameters
     row: Floats
     balance: Floats  # (cards,) K, its value at zero
+    by_drop: Floats  # (cards,) K, change of that by the relative drop of pressure at the open valve
 
 
 def fit_lines(
@@ -221,12 +222,17 @@ def _priors(case: Problem, prior_u: Floats) -> _Priors:
     mean[:, 4], weight[:, 4] = WALL_PRIOR[0], 1 / WALL_PRIOR[1] ** 2
     weight[:, 5] = 1 / SHAPE_PRIOR**2
     weight[:, 7] = 1 / CLEARANCE_GAS_PRIOR**2
-    row, balance = _suction_balance(case)
+    row, balance, by_drop = _suction_balance(case)
     mean[:, 7] = _clearance_gas_mean(case)
-    return _Priors(mean, weight, row, balance)
+    return _Priors(mean, weight, row, balance, by_drop)
 
 
-def _suction_balance(case: Problem) -> tuple[Floats, Floats]:
+def _at_open_suction(cards: CardSet) -> Booleans:
+    """Samples at which the suction valve of any working end is open."""
+    return (cards.crank_angle > 90) & (cards.crank_angle < 170)
+
+
+def _suction_balance(case: Problem) -> tuple[Floats, Floats, Floats]:
     """Warming of the gas drawn in, less what heat, loss and clearance gas would make of it.
 
     Notes
@@ -246,8 +252,8 @@ def _suction_balance(case: Problem) -> tuple[Floats, Floats]:
     gain = GAS_EXCHANGE * known.heat_rate * area * time / mass
     gain = gain / known.suction.enthalpy_by_temperature
     span = known.path.temperature - cards.suction_temperature
-    out = (cards.crank_angle > 90) & (cards.crank_angle < 170)
-    drop = 1 - cards.pressure[:, out].mean(-1) / cards.suction_pressure
+    shown = cards.pressure[:, _at_open_suction(cards)].mean(-1)
+    drop = 1 - shown / cards.suction_pressure
     exponent = known.path.temperature_exponent
     loss = cards.suction_temperature * (exponent - 1) / exponent * np.clip(drop, 0, 0.2)
     # warming (1 - share + gain / 2) = gain wall span + loss + share (clearance gas), gain ~
@@ -259,7 +265,8 @@ def _suction_balance(case: Problem) -> tuple[Floats, Floats]:
     row[:, 3] = -expected / (1 + 0.5 * gain * mixed)
     row[:, 4] = -gain * span * mixed
     row[:, 7] = -share * mixed
-    return row, -(loss * mixed) - (expected + row[:, 4] * WALL_PRIOR[0])
+    by_drop = np.where((drop > 0) & (drop < 0.2), -mixed * loss / np.where(drop == 0, 1, drop), 0)
+    return row, -(loss * mixed) - (expected + row[:, 4] * WALL_PRIOR[0]), by_drop
 
 
 def _clearance_gas_mean(case: Problem) -> Floats:
@@ -323,6 +330,13 @@ def _slopes(
         slopes[:, :free, INDEX[name]] += inverse[:, :, place] * priors.weight[:, place, None]
     balance = np.einsum("cfg,cg->cf", inverse, priors.row) / WARMING_PRIOR**2
     slopes[:, :free, INDEX["warming"]] += balance
+    # The drop is 1 - (mean trace) / (line pressure): it moves with level, gain and line pressure.
+    drop = balance * priors.by_drop[:, None]
+    shown = case.cards.pressure[:, _at_open_suction(case.cards)].mean(-1)
+    line = case.cards.suction_pressure
+    slopes[:, :free, INDEX["pressure_level"]] -= drop / line[:, None]
+    slopes[:, :free, INDEX["pressure_gain"]] += drop * (shown / line)[:, None]
+    slopes[:, :free, INDEX["suction_pressure"]] -= drop * (shown / line**2)[:, None]
     first = INDEX["line_noise_1"]
     slopes[:, :free, first : first + FIT_NOISE] = _noise_factors(case, gain, white_noise, misfit)
     slopes[:, PLACE["dead_centre"], INDEX["dead_centre"]] = 1

@@ -27,9 +27,7 @@ from pvcard.uncertainty import INDEX, INPUTS, Estimate, constant
 from tests.cards import ideal_cards, ideal_pressure
 
 TABLE = Path(__file__).parent / "data/check_values_core.csv"
-ROWS = {
-    row["id"]: row for row in csv.DictReader(TABLE.read_text(encoding="utf-8").splitlines())
-}
+ROWS = {row["id"]: row for row in csv.DictReader(TABLE.read_text(encoding="utf-8").splitlines())}
 AIR = 287.0  # J/(kg K), as the books round it
 KGF_CM2 = 98066.5  # Pa
 METRIC_HORSEPOWER = 75 * 9.80665  # W
@@ -245,36 +243,25 @@ CHECKS: dict[str, Callable[[], float]] = {
     "VE-01": lambda: 100 * nag_19_3().efficiency,
     "VE-02": lambda: nag_19_3().work * 800 / 60 / 1e3,
     "VE-03": lambda: nag_19_3().density * 2e-3 * nag_19_3().efficiency * 800,
-    "VE-04": lambda: 100
-    * 101.3e3
-    * 2e-3
-    * nag_19_3().efficiency
-    * np.log(8)
-    / nag_19_3().work,
+    "VE-04": lambda: 100 * 101.3e3 * 2e-3 * nag_19_3().efficiency * np.log(8) / nag_19_3().work,
     "VE-05": vanishing,
     "VE-06": lambda: 3 / 60 * Ideal(1e5, 6e5, 1.3).rise / 1e3,
-    "VE-07": lambda: 100
-    * Ideal(96e3, 725e3, 1.3, 0.05).efficiency
-    * free_air(96, 305, 101.3, 292),
-    "VE-08": lambda: 500
-    * np.pi
-    / 4
-    * 0.2**2
-    * 0.3
-    * joel_14_1().efficiency
-    * free_air(97, 293, 101.325, 288),
+    "VE-07": lambda: 100 * Ideal(96e3, 725e3, 1.3, 0.05).efficiency * free_air(96, 305, 101.3, 292),
+    "VE-08": lambda: (
+        500 * np.pi / 4 * 0.2**2 * 0.3 * joel_14_1().efficiency * free_air(97, 293, 101.325, 288)
+    ),
     "VE-09": lambda: 100 * joel_14_1().efficiency * free_air(97, 293, 101.325, 288),
     "VE-10": lambda: joel_14_1().temperature - 273,
     "VE-11": lambda: joel_14_1().work * 500 / 60 / 1e3,
     "VE-12": displacement_3,
-    "VE-13": lambda: 3
-    * Ideal(1e5, 15 ** (1 / 3) * 1e5, 1.3, temperature=291.0, gas_constant=290.0).rise
-    / 1e3,
+    "VE-13": lambda: (
+        3 * Ideal(1e5, 15 ** (1 / 3) * 1e5, 1.3, temperature=291.0, gas_constant=290.0).rise / 1e3
+    ),
     "VE-14": lambda: 100 * Ideal(101325, 29 * 101325, 1.4, 0.05).efficiency,
     "VE-16": lambda: 5.15 * Ideal(KGF_CM2, 8.5 * KGF_CM2, 1.31, 0.06).efficiency,
-    "VE-17": lambda: Ideal(KGF_CM2, 8.5 * KGF_CM2, 1.31, 0.06, swept=5.15 / 60).work
-    / 0.8
-    / METRIC_HORSEPOWER,
+    "VE-17": lambda: (
+        Ideal(KGF_CM2, 8.5 * KGF_CM2, 1.31, 0.06, swept=5.15 / 60).work / 0.8 / METRIC_HORSEPOWER
+    ),
     "VE-18": lambda: mooney(0.03),
     "VE-19": lambda: mooney(0.06),
     "PWR-01": lambda: staged(1),
