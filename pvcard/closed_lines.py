@@ -70,6 +70,7 @@ class Problem(NamedTuple):
     sine: Floats  # (cards, 2 nodes), of the crank angle
     cosine: Floats
     crank_angle: Floats  # (cards, 2 nodes) deg
+    start: Floats  # (cards,) clearance from which a fit starts: two points of the expansion
     declared: Place  # (cards, 2 nodes), motion at the declared mark and rod
     ln_pressure: Floats  # (cards, 2 nodes)
     width: Floats  # (cards, 2) samples per node
@@ -128,7 +129,8 @@ def problem(cards: CardSet, turn: Turning, windows: Windows, known: References) 
     error.
     """
     exponent = known.path.volume_exponent[:, None]
-    guess = start_clearance(cards)[:, None]
+    start = _two_point_clearance(cards, turn, windows, known.path.volume_exponent)
+    guess = start[:, None]
     with np.errstate(invalid="ignore", divide="ignore"):
         flat = np.log(cards.pressure) + exponent * np.log(guess + turn.motion.travel)
     bins = span_means(flat, cards.crank_angle, windows)
@@ -137,8 +139,28 @@ def problem(cards: CardSet, turn: Turning, windows: Windows, known: References) 
     at = place_from_sine(sine, cosine, cards.rod_ratio[:, None], cards.rod_sign[:, None])
     ln_pressure = bins.mean - exponent * np.log(guess + at.travel)
     return Problem(
-        cards, known, windows, sine, cosine, bins.crank_angle, at, ln_pressure, bins.width
+        cards, known, windows, sine, cosine, bins.crank_angle, start, at, ln_pressure, bins.width
     )
+
+
+def _two_point_clearance(
+    cards: CardSet, turn: Turning, windows: Windows, exponent: Floats
+) -> Floats:
+    """Clearance that joins the ends of the expansion span by the mean exponent of the gas.
+
+    Notes
+    -----
+    ``C = (x_B - q x_A) / (q - 1)`` with ``q = (p_A / p_B)^(1/n)``; as declared where that is
+    absurd.
+    """
+    row = np.arange(len(exponent))
+    first, last = windows.expansion_first, windows.expansion_last
+    travel = turn.motion.travel
+    with np.errstate(invalid="ignore", divide="ignore"):
+        q = (cards.pressure[row, first] / cards.pressure[row, last]) ** (1 / exponent)
+        found = (travel[row, last] - q * travel[row, first]) / (q - 1)
+    good = np.isfinite(found) & (found > 0.005) & (found < 5.0)
+    return np.where(good, found, start_clearance(cards))
 
 
 def taken(case: Problem, rows: Integers) -> Problem:
@@ -165,6 +187,7 @@ def taken(case: Problem, rows: Integers) -> Problem:
         case.sine[rows],
         case.cosine[rows],
         case.crank_angle[rows],
+        case.start[rows],
         Place(*(one[rows] for one in case.declared)),
         case.ln_pressure[rows],
         case.width[rows],

@@ -61,6 +61,7 @@ class _Departure(NamedTuple):
     crank_angle: Floats  # (cards, steps) deg, starting at the corner
     value: Floats  # (cards, steps), measured less modelled ln p
     inside: Booleans  # (cards, steps)
+    spacing: float  # deg, mean distance of neighbours
 
 
 def valve_events(case: Problem, fit: Fit, white_noise: Floats) -> Events:
@@ -127,7 +128,7 @@ def _departure(
         shown = np.log(np.take_along_axis(cards.pressure, index, axis=-1))
     measured = np.concatenate([at_corner[:, None], shown], axis=-1)
     modelled = _extended(case, fit, corner, angle, measured)
-    return _Departure(angle[:, 1:], (measured - modelled)[:, 1:], inside)
+    return _Departure(angle[:, 1:], (measured - modelled)[:, 1:], inside, spacing * stride)
 
 
 def _extended(case: Problem, fit: Fit, corner: int, angle: Floats, measured: Floats) -> Floats:
@@ -225,16 +226,14 @@ def _opening(departure: _Departure, sign: float, noise: _Noise) -> Event:
     early, seen = _crossing(departure, sustained, level)
     late, grown = _crossing(departure, sustained, _LEVELS_APART * level)
     back = np.where(grown, np.clip(late - early, 0, 3.0), 0.5)
-    spacing = np.abs(departure.crank_angle[:, 2] - departure.crank_angle[:, 1])
     angle = np.where(seen, early - back, np.nan)
-    return Event(angle, np.hypot(0.3 + 0.3 * back, spacing / 3))
+    return Event(angle, np.hypot(0.3 + 0.3 * back, departure.spacing / 3))
 
 
 def _closing(departure: _Departure, noise: _Noise) -> Event:
     """Last angle before the span at which the departure still bends or runs away."""
-    spacing = np.abs(departure.crank_angle[:, 2] - departure.crank_angle[:, 1])
-    step = float(np.nanmedian(spacing))
-    reach = _half_width(float(np.nanmedian(noise.white)), step)
+    step = departure.spacing
+    reach = _half_width(noise.white, step)
     slope, bend = _local_parabola(departure.value, reach)
     slope, bend = np.abs(slope) / step, np.abs(bend) / step**2
     offsets = np.arange(-reach, reach + 1.0)
@@ -254,9 +253,10 @@ def _closing(departure: _Departure, noise: _Noise) -> Event:
     return Event(blurred, np.hypot(1.2, reach * step / 2) * np.sqrt(np.minimum(widened, 100.0)))
 
 
-def _half_width(white_noise: float, spacing: float) -> int:
+def _half_width(white_noise: Floats, spacing: float) -> int:
     """Half width, in steps, over which the departure is smoothed: wider where noise asks for it."""
-    wanted = np.sqrt(white_noise / _CLOSING_BEND) if np.isfinite(white_noise) else 0.0
+    known = white_noise[np.isfinite(white_noise)]
+    wanted = float(np.sqrt(np.median(known) / _CLOSING_BEND)) if len(known) else 0.0
     return int(np.clip(round(wanted / spacing), 1, max(1, round(3.0 / spacing))))
 
 

@@ -134,7 +134,18 @@ def entropy(gibbs: Gibbs, ln_pressure: Floats) -> Floats:
 
 
 def speed_of_sound(gibbs: Gibbs, gas_constant: float, temperature: Floats) -> Floats:
-    """Return ``sqrt(k_v Z R T)``. [m/s]."""
+    """Speed of sound, ``sqrt(k_v Z R T)``.
+
+    Parameters
+    ----------
+    gibbs, temperature, gas_constant
+        Reduced Gibbs energy there, any shape; [K]; of one kilogram [J/(kg K)].
+
+    Returns
+    -------
+    speed : same shape
+        [m/s]
+    """
     square = volume_exponent(gibbs) * compressibility(gibbs) * gas_constant * temperature
     result: Floats = np.sqrt(square)
     return result

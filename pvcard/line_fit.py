@@ -140,6 +140,7 @@ def _solve(
     state = np.zeros((len(prior_u), len(PARAMETERS)))
     priors = _priors(case, prior_u)
     state[:, : len(FREE)] = priors.mean
+    state[:, PLACE["clearance"]] = case.start
     state[:, PLACE["warming"]] = -_imbalance(priors, state)
     weight = _weights(case, white_noise)
     moving = np.flatnonzero(case.windows.found)
@@ -155,6 +156,7 @@ def _solve(
         _keep_within(state)
         settled = np.all(np.abs(step) < _SETTLED, axis=-1) | ~np.all(np.isfinite(step), axis=-1)
         moving = moving[~settled]
+    state[~case.windows.found] = np.nan
     linear = linearise(case, state)
     return state, linear, priors, _information(linear, weight, priors)
 

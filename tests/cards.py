@@ -1,4 +1,5 @@
-"""Cards with known truth: exact polytropes between line pressures, of a gas with a constant exponent."""
+"""Cards with known truth: exact polytropes between line pressures, of a gas with a constant
+exponent."""
 
 from __future__ import annotations
 

@@ -1,4 +1,5 @@
-"""Propagated uncertainties against Monte Carlo (JCGM 101:2008, clause 7): both draw on the same inputs."""
+"""Propagated uncertainties against Monte Carlo (JCGM 101:2008, clause 7): both draw on the same
+inputs."""
 
 from __future__ import annotations
 

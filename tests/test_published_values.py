@@ -1,8 +1,8 @@
 """Handbook and textbook values, each against the library's own functions.
 
-SOURCE of every row: the column `source` of data/check_values_core.csv, copied with its confidence; rows
-"read from" textbook companions repeat worked examples of the named books, those "computed from first
-principles" are closed forms, those "from memory" say so.
+SOURCE of every row: the column `source` of data/check_values_core.csv, copied with its confidence;
+rows "read from" textbook companions repeat worked examples of the named books, those "computed from
+first principles" are closed forms, those "from memory" say so.
 """
 
 from __future__ import annotations
@@ -130,7 +130,8 @@ def singh_total() -> float:
 
 
 def best_ratio(clearance: float, n: float) -> tuple[float, float]:
-    """Pressure ratio of greatest ideal work and that work over suction pressure and swept volume."""
+    """Pressure ratio of greatest ideal work and that work over suction pressure and swept
+    volume."""
 
     def less(ratio: float) -> float:
         return -Ideal(1e5, ratio * 1e5, n, clearance).work / 1e5
@@ -328,7 +329,8 @@ def test_capacity_vanishes_at_the_ratio_of_the_table() -> None:
 
 
 def test_two_term_series_of_the_books_is_near_the_exact_motion() -> None:
-    # SOURCE: KIN-08, KIN-10, KIN-11: Khurmi & Gupta, examples 15.3 and 15.4. The books cut the series
+    # SOURCE: KIN-08, KIN-10, KIN-11: Khurmi & Gupta, examples 15.3 and 15.4. The books cut the
+    # series
     # after two terms; the exact motion differs from it by parts in a thousand.
     fast = 0.6 * float(motion(np.linspace(60, 90, 3001), 0.3, HEAD_END).slope.max())
     assert fast * 2 * np.pi * 200 / 60 == pytest.approx(float(ROWS["KIN-08"]["expected"]), rel=5e-3)

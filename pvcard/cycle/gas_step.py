@@ -84,7 +84,18 @@ class DischargeLine:
 
 
 def gas_state(setting: Setting, mass: Floats, energy: Floats, volume: Floats) -> Contents:
-    """State from mass, energy and volume, all (ends, cards)."""
+    """State from mass, energy and volume.
+
+    Parameters
+    ----------
+    setting : what stays fixed over a turn
+    mass, energy, volume : (ends, cards)
+        [kg], [J], [m3]
+
+    Returns
+    -------
+    Contents
+    """
     density = mass / volume
     specific = energy / mass
     pressure, temperature = setting.fluid.state(density, specific)

@@ -1,4 +1,5 @@
-"""Batches of invented cards for timing: ideal lines, rippled plateaus, noise; every card its own machine."""
+"""Batches of invented cards for timing: ideal lines, rippled plateaus, noise; every card its own
+machine."""
 
 from __future__ import annotations
 
