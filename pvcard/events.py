@@ -92,7 +92,7 @@ def valve_events(case: Problem, fit: Fit, white_noise: Floats) -> Events:
         case, fit, 0, windows.compression_first, -1, _CLOSING_REACH_DEG, (half - half // 15, last)
     )
     expansion_start = _departure(
-        case, fit, 2, windows.expansion_first, -1, _CLOSING_REACH_DEG, (0, half)
+        case, fit, 2, windows.expansion_first, -1, _OPENING_REACH_DEG, (0, half)
     )
     noise = _Noise(white_noise, fit.misfit)
     return Events(

@@ -53,8 +53,9 @@ GAS_EXCHANGE = (
 )
 ITERATIONS = 12  # at most; most cards settle after four
 CORNERS = (0, NODES - 1, NODES, 2 * NODES - 1)  # first and last node of compression, of expansion
-# Per free parameter: steps below which a card has settled, and largest steps.
-_SETTLED = np.array([5e-4, 2e-3, 2e-3, 0.1, 0.05, 0.1, 1.0, 1.0])
+# A card has settled once its next step is this small, squared and in standard deviations.
+_SETTLED = 0.02
+# Largest step of each free parameter.
 _LARGEST = np.array([0.05, 1.0, 1.0, 0.7, 0.3, 0.5, 8.0, 8.0])
 _RANGES = (
     ("clearance", 0.002, 3.0),
@@ -151,10 +152,10 @@ def _solve(
         if len(moving) < len(part.ln_pressure):
             part, own = taken(case, moving), _Priors(*(one[moving] for one in priors))
         linear = linearise(part, state[moving], everything=False)
-        step = _step(linear, weight[moving], own, state[moving])
+        step, left = _step(linear, weight[moving], own, state[moving])
         state[moving, : len(FREE)] -= step
         _keep_within(state)
-        settled = np.all(np.abs(step) < _SETTLED, axis=-1) | ~np.all(np.isfinite(step), axis=-1)
+        settled = ~(left > _SETTLED)
         moving = moving[~settled]
     state[~case.windows.found] = np.nan
     linear = linearise(case, state)
@@ -167,14 +168,21 @@ def _imbalance(priors: _Priors, state: Floats) -> Floats:
     return result
 
 
-def _step(linear: Linear, weight: Floats, priors: _Priors, state: Floats) -> Floats:
-    """Step of the free parameters to be taken off, no larger than the model is linear."""
+def _step(linear: Linear, weight: Floats, priors: _Priors, state: Floats) -> tuple[Floats, Floats]:
+    """Step of the free parameters to be taken off, no larger than the model is linear.
+
+    Second comes what it is expected to gain, in units of the chi-square per degree of freedom: the
+    square of the step in standard deviations.
+    """
     free = slice(0, len(FREE))
     information = _information(linear, weight, priors)
     pull = np.einsum("cnp,cn->cp", linear.jacobian[..., free], weight * linear.residual)
     pull += priors.row * (_imbalance(priors, state) / WARMING_PRIOR**2)[:, None]
     pull += priors.weight * (state[:, free] - priors.mean)
-    return np.clip(_solved(information, pull[..., None])[..., 0], -_LARGEST, _LARGEST)
+    step = _solved(information, pull[..., None])[..., 0]
+    scatter = np.einsum("cn,cn,cn->c", weight, linear.residual, linear.residual)
+    gain = np.einsum("cp,cp->c", step, pull) / (1 + scatter / linear.residual.shape[-1])
+    return np.clip(step, -_LARGEST, _LARGEST), gain
 
 
 def _keep_within(state: Floats) -> None:
