@@ -201,6 +201,11 @@ def test_without_suction_temperature_power_stays_and_the_rest_says_why(tmp_path:
     row = analysed(tmp_path)["ends"][0]
     assert row["ideal_power_kW"] is None
     assert "suction temperature is not known" in row["reason"]["ideal_power_kW"]
+    write_export(tmp_path)
+    whole = analysed(tmp_path)["ends"][0]
+    for column in ("indicated_power_kW", "pressure_max_bar", "discharge_temperature_degC"):
+        assert row[column] == pytest.approx(whole[column])
+        assert row[f"u_{column}"] > 0
 
 
 def test_bare_pressure_unit_is_decided_by_its_level(tmp_path: Path) -> None:

@@ -4,11 +4,12 @@ from __future__ import annotations
 
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass
+from typing import cast
 
 import numpy as np
 
 from pvcard.analysis.end_traces import EndTrace
-from pvcard.card.measure import CHUNK, Measured, measure
+from pvcard.card.measure import CHUNK, Columns, Measured, measure, measure_without_gas
 from pvcard.card_set import CardSet
 from pvcard.errors import GasError
 from pvcard.gas import Gas, check_gas_phase, gas_for, gas_table
@@ -47,6 +48,14 @@ class Outcome:
     cards: CardSet | None
     input_uncertainty: Floats | None  # (inputs,)
     problem: str = ""
+    plain: Columns | None = None  # what could be told without gas and line values
+
+    @property
+    def columns(self) -> Columns:
+        """Everything that was measured."""
+        if self.measured is not None:
+            return self.measured.columns
+        return self.plain or {}
 
 
 def measure_jobs(
@@ -71,12 +80,12 @@ def measure_jobs(
     for number, job in enumerate(jobs):
         problem = _unusable(job)
         if problem:
-            outcomes[number] = Outcome(None, 0, None, None, problem)
+            outcomes[number] = _without_gas(job, problem, with_uncertainty)
             continue
         try:
             gas = _gas_of(job)
         except GasError as error:
-            outcomes[number] = Outcome(None, 0, None, None, error.message())
+            outcomes[number] = _without_gas(job, error.message(), with_uncertainty)
             continue
         gases[id(gas)] = gas
         groups.setdefault(_key(job, gas), []).append(number)
@@ -95,6 +104,14 @@ def measure_jobs(
             if progress:
                 progress("measuring", done / len(jobs))
     return outcomes
+
+
+def _without_gas(job: Job, problem: str, with_uncertainty: bool) -> Outcome:
+    """Power and peaks of an end whose gas or lines are not known well enough for the rest."""
+    cards = card_set([job], cast(Gas, None), cast(GasTable, None))
+    unsure = input_uncertainty([job], None)
+    plain = measure_without_gas(cards, with_uncertainty=with_uncertainty)
+    return Outcome(None, 0, None, unsure[0], problem, plain)
 
 
 def _unusable(job: Job) -> str:
@@ -147,7 +164,7 @@ def _measure_part(jobs: list[Job], gas: Gas, with_uncertainty: bool) -> list[Out
     try:
         table = _table(jobs, gas)
     except GasError as error:
-        return [Outcome(None, 0, None, None, error.message()) for _ in jobs]
+        return [_without_gas(job, error.message(), with_uncertainty) for job in jobs]
     cards = card_set(jobs, gas, table)
     unsure = input_uncertainty(jobs, gas)
     measured = measure(cards, unsure, with_uncertainty=with_uncertainty)
@@ -222,13 +239,14 @@ def card_set(jobs: Sequence[Job], gas: Gas, table: GasTable) -> CardSet:
     )
 
 
-def input_uncertainty(jobs: Sequence[Job], gas: Gas) -> Floats:
+def input_uncertainty(jobs: Sequence[Job], gas: Gas | None) -> Floats:
     """Standard uncertainties of all inputs for each end.
 
     Parameters
     ----------
     jobs : sequence of Job
-    gas : Gas
+    gas : Gas or None
+        None where it is not known.
 
     Returns
     -------
@@ -251,7 +269,7 @@ def input_uncertainty(jobs: Sequence[Job], gas: Gas) -> Floats:
             "connecting_rod_length": declared.connecting_rod_length,
             "clearance": job.clearance_uncertainty,
             "gas_exponent": float(
-                np.hypot(declared.gas_exponent, gas.relative_exponent_uncertainty)
+                np.hypot(declared.gas_exponent, gas.relative_exponent_uncertainty if gas else 0.0)
             ),
             "speed": trace.speed_uncertainty,
             "turn_scatter": trace.turn_scatter,

@@ -26,6 +26,13 @@ _FLAT = (
     "the trace does not run from suction to discharge pressure and back: the end does not "
     "compress, or a line pressure or unit is wrong"
 )
+# Line readings that are shown even where nothing could be measured against them.
+_READ = (
+    "suction_pressure_bar",
+    "discharge_pressure_bar",
+    "suction_temperature_degC",
+    "discharge_temperature_degC",
+)
 # Columns that need both closed spans of the card.
 _CLOSED = (
     "clearance_pct",
@@ -62,9 +69,9 @@ def end_row(job: Job, outcome: Outcome, load_step: str | None) -> Row:
     measured = outcome.measured
     for column in END_COLUMNS:
         value, u = None, None
-        if measured is not None and outcome.input_uncertainty is not None:
-            value, u = _figure(measured, outcome, column)
-        elif column in ("suction_pressure_bar", "discharge_pressure_bar", "speed_rpm"):
+        if column in outcome.columns:
+            value, u = _figure(outcome, column)
+        elif measured is None and column in _READ:
             value, u = _plain(trace, column)
         put(row, column, value, u)
         if value is None:
@@ -137,11 +144,10 @@ def _identity(trace: EndTrace, load_step: str | None) -> Row:
 
 
 def _plain(trace: EndTrace, column: str) -> tuple[float, float]:
-    lines = trace.lines
-    if column == "speed_rpm":
-        return trace.speed * 60, trace.speed_uncertainty * trace.speed * 60
-    name = column.removesuffix("_bar")
-    return getattr(lines, name) / 1e5, getattr(lines, f"{name}_u") / 1e5
+    """Line readings as they are."""
+    name, unit = column.rsplit("_", 1)
+    value, u = getattr(trace.lines, name), getattr(trace.lines, f"{name}_u")
+    return (value / 1e5, u / 1e5) if unit == "bar" else (value - 273.15, u)
 
 
 def estimate_of(outcome: Outcome, column: str) -> Estimate | None:
@@ -157,19 +163,20 @@ def estimate_of(outcome: Outcome, column: str) -> Estimate | None:
     Estimate or None
         None where the column was not measured.
     """
-    if outcome.measured is None or column not in outcome.measured.columns:
+    if column not in outcome.columns:
         return None
-    whole = outcome.measured.columns[column]
+    whole = outcome.columns[column]
     return Estimate(
         whole.value[outcome.row : outcome.row + 1], whole.slopes[outcome.row : outcome.row + 1]
     )
 
 
-def _figure(measured: Measured, outcome: Outcome, column: str) -> tuple[float | None, float | None]:
-    estimate = estimate_of(outcome, column)
+def _figure(outcome: Outcome, column: str) -> tuple[float | None, float | None]:
+    estimate, measured = estimate_of(outcome, column), outcome.measured
     if estimate is None or outcome.input_uncertainty is None:
         return None, None
-    if not measured.closed[outcome.row] and any(part in column for part in _CLOSED):
+    closed = measured is None or bool(measured.closed[outcome.row])
+    if not closed and any(part in column for part in _CLOSED):
         return None, None
     value = float(estimate.value[0])
     if not np.isfinite(value):

@@ -97,6 +97,35 @@ def measure(
     return Measured(columns, closed, fit, at, events, case, turn, *sides, noise)
 
 
+def measure_without_gas(cards: CardSet, *, with_uncertainty: bool = True) -> Columns:
+    """Quantities that need neither gas nor line values: power, work and the peaks of the trace.
+
+    Parameters
+    ----------
+    cards : CardSet
+        Its gas and table are not looked at.
+    with_uncertainty : whether to carry derivatives
+
+    Returns
+    -------
+    dict
+        Columns in their reported units.
+    """
+    inputs = len(INPUTS) if with_uncertainty else 0
+    turn = turning(cards)
+    size = geometry(cards, inputs)
+    work = indicated_work(cards, turn, np.zeros(len(cards.pressure)), inputs)
+    work = work.depending_on("turn_scatter", work.value)
+    columns = {
+        "speed_rpm": size.speed * 60,
+        "indicated_power_kW": work * size.speed / 1e3,
+        "indicated_work_kJ": work / 1e3,
+        "mean_effective_pressure_bar": work / size.swept_volume / 1e5,
+    }
+    columns.update(_peaks(cards, np.zeros(len(cards.pressure)), inputs))
+    return columns
+
+
 def geometry(cards: CardSet, inputs: int) -> Geometry:
     """Dimensions of the ends as estimates.
 
@@ -180,7 +209,7 @@ def _peaks(cards: CardSet, noise: Floats, inputs: int) -> Iterator[tuple[str, Es
     ):
         estimate = constant(value, inputs).depending_on("pressure_level", -1.0)
         estimate = estimate.depending_on("pressure_gain", value)
-        beyond = RINGING * np.abs(value - line)
+        beyond = RINGING * np.abs(value - np.where(np.isfinite(line), line, value))
         yield name, estimate.depending_on("noise_peaks", np.hypot(noise * value, beyond)) / 1e5
 
 
