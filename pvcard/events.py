@@ -23,7 +23,7 @@ from pvcard.types import Booleans, Floats, Integers
 from pvcard.uncertainty import Estimate, constant
 
 _STEP_DEG = 0.5  # spacing at which a departure is followed, or the grid's own if coarser
-_OPENING_REACH_DEG, _CLOSING_REACH_DEG = 30.0, 65.0
+_OPENING_REACH_DEG, _SUCTION_REACH_DEG, _DISCHARGE_REACH_DEG = 30.0, 65.0, 45.0
 _OPENING_LEVEL = 1e-3  # least departure in ln p that counts at an opening
 _LEVELS_APART = 8.0  # second level over first; a growth with the third power takes twice the time
 _CLOSING_SLOPE = 1.5e-4  # least slope of the departure in ln p per degree that counts at a closing
@@ -89,10 +89,10 @@ def valve_events(case: Problem, fit: Fit, white_noise: Floats) -> Events:
         case, fit, 1, windows.compression_last, +1, _OPENING_REACH_DEG, (half, last)
     )
     compression_start = _departure(
-        case, fit, 0, windows.compression_first, -1, _CLOSING_REACH_DEG, (half - half // 15, last)
+        case, fit, 0, windows.compression_first, -1, _SUCTION_REACH_DEG, (half - half // 15, last)
     )
     expansion_start = _departure(
-        case, fit, 2, windows.expansion_first, -1, _OPENING_REACH_DEG, (0, half)
+        case, fit, 2, windows.expansion_first, -1, _DISCHARGE_REACH_DEG, (-half // 15, half)
     )
     noise = _Noise(white_noise, fit.misfit)
     return Events(
@@ -120,9 +120,11 @@ def _departure(
     steps = max(4, int(reach / (spacing * stride)))
     index = start[:, None] + direction * stride * np.arange(1, steps + 1)
     inside = (index >= limits[0]) & (index <= limits[1])
-    index = np.clip(index, 0, len(grid) - 1)
+    turn = np.floor_divide(index, len(grid))  # -1 before the dead centre of least volume
+    index = index - turn * len(grid)
     node = CORNERS[corner]
-    angle = np.concatenate([case.crank_angle[:, node, None], grid[index]], axis=-1)
+    beyond = grid[index] + 360.0 * turn
+    angle = np.concatenate([case.crank_angle[:, node, None], beyond], axis=-1)
     at_corner = case.ln_pressure[:, node] - fit.linear.residual[:, node]
     with np.errstate(invalid="ignore", divide="ignore"):
         shown = np.log(np.take_along_axis(cards.pressure, index, axis=-1))

@@ -311,7 +311,7 @@ _TOTALS = [
     (
         "specific_power_kWh_per_1000_m3",
         "Specific power",
-        "kWh per 1000 m3",
+        "kWh/1000 m3",
         "indicated power over standard flow",
     ),
     (

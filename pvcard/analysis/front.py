@@ -177,7 +177,7 @@ def _result(
             views[row["cylinder"], row["end"]] = card_view(job, outcome, row)
     for cylinder in machine.cylinders:
         repairs.extend(_step_repair(cylinder, one.choices[cylinder.name]))
-    ends = _with_others(machine, gathered, one.choices, ends)
+    ends = _with_others(machine, one.choices, ends)
     rows = [row for row, _ in ends]
     totals = total_rows(machine, ends, set(idle))
     time = gathered.recording.time
@@ -212,7 +212,6 @@ def _why_idle(machine: Machine, job: Job, choice: StepChoice) -> str:
 
 def _with_others(
     machine: Machine,
-    gathered: Gathered,
     choices: dict[str, StepChoice],
     ends: list[tuple[Row, Outcome | None]],
 ) -> list[tuple[Row, Outcome | None]]:
@@ -238,7 +237,6 @@ def _with_others(
                 row, [item for (name, _), item in known.items() if name == cylinder.name]
             )
             result.append((row, None))
-    del gathered
     return result
 
 
@@ -269,7 +267,7 @@ def _repairs_of(job: Job, outcome: Outcome, row: Row) -> list[Row]:
         figure = (fitted - declared, "points", u)
         repairs.append(repair_entry("clearance_mismatch", text, **where, figure=figure))
     power = row["indicated_power_kW"]
-    if power is not None and power < 0:
+    if power is not None and power < -3 * (row["u_indicated_power_kW"] or 0.0):
         text = (
             "the loop gives work instead of taking it in: the angle runs against the rotation, or "
             "the ends are swapped; nothing was changed"

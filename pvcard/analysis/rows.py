@@ -75,10 +75,10 @@ def end_row(job: Job, outcome: Outcome, load_step: str | None) -> Row:
             value, u = _plain(trace, column)
         put(row, column, value, u)
         if value is None:
-            reasons[column] = _reason(column, trace, outcome)
+            reasons[column] = _reason(column, outcome)
     if measured is not None:
         _passage(row, reasons, trace, outcome, measured)
-        _standard_flow(row, reasons, job, outcome, measured)
+        _standard_flow(row, reasons, job, measured)
     row["reason"] = reasons
     return row
 
@@ -186,7 +186,7 @@ def _figure(outcome: Outcome, column: str) -> tuple[float | None, float | None]:
     return value, float(estimate.uncertainty(outcome.input_uncertainty[None])[0])
 
 
-def _reason(column: str, trace: EndTrace, outcome: Outcome) -> str:
+def _reason(column: str, outcome: Outcome) -> str:
     for part, text in _LATER.items():
         if part in column:
             return text
@@ -205,7 +205,6 @@ def _reason(column: str, trace: EndTrace, outcome: Outcome) -> str:
         return "the trace shows no such event within reach of the closed parts"
     if column.endswith("flow_area_cm2"):
         return "the trace shows no loss in this valve from which an area could be told"
-    del trace
     return "this recording does not determine it"
 
 
@@ -225,9 +224,7 @@ def _passage(
             reasons.pop(column, None)
 
 
-def _standard_flow(
-    row: Row, reasons: dict[str, str], job: Job, outcome: Outcome, measured: Measured
-) -> None:
+def _standard_flow(row: Row, reasons: dict[str, str], job: Job, measured: Measured) -> None:
     flow = row["discharge_flow_kg_h"]
     column = "standard_flow_m3_h"
     if flow is None:
@@ -242,7 +239,6 @@ def _standard_flow(
     u = row["u_discharge_flow_kg_h"]
     put(row, column, flow / density, None if u is None else u / density)
     reasons.pop(column, None)
-    del outcome
 
 
 def cylinder_row(name: str) -> Row:

@@ -2,8 +2,6 @@
 
 from __future__ import annotations
 
-from typing import Any
-
 import numpy as np
 
 from pvcard.analysis.batch import Outcome
@@ -11,7 +9,7 @@ from pvcard.analysis.rows import Row, estimate_of
 from pvcard.machine import Machine
 from pvcard.quantities import TOTAL_QUANTITIES
 from pvcard.types import Floats
-from pvcard.uncertainty import Estimate, sum_uncertainty
+from pvcard.uncertainty import sum_uncertainty
 
 _TORQUE = "this version of pvcard does not compute rod loads and torque"
 _SUMMED = {
@@ -177,7 +175,4 @@ def _driver(machine: Machine, row: Row, reasons: dict[str, str]) -> None:
     row[column] = 100 * (shaft + auxiliary) / rated
     if u is not None:
         relative = np.hypot(u / power if power else 0.0, _MECHANICAL_EFFICIENCY_U)
-        row[f"u_{column}"] = float(100 * shaft / rated * relative)
-
-
-__all__: list[Any] = ["Estimate", "total_rows"]
+        row[f"u_{column}"] = float(abs(100 * shaft / rated) * relative)

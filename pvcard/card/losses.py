@@ -7,7 +7,7 @@ from typing import NamedTuple
 import numpy as np
 
 from pvcard.card.lines import Crossing, Crossings
-from pvcard.card.work import Running, integral_at, outward_angle
+from pvcard.card.work import Running, integral_at
 from pvcard.card_set import CardSet, Turning, curvature
 from pvcard.kinematics import place
 from pvcard.types import Floats
@@ -225,16 +225,3 @@ def flow_area(
     area = (size / part.loss).power(0.5)
     mean_drop = np.abs(part.loss.value) / (swept * np.maximum(width, 1e-6))
     return area / (1 - 0.75 / exponent * np.clip(mean_drop / upstream_pressure, 0, 0.3))
-
-
-__all__ = [
-    "FlowIntegral",
-    "Span",
-    "discharge_span",
-    "flow_area",
-    "open_part",
-    "outward_angle",
-    "suction_span",
-    "trace_integral",
-    "valve_loss",
-]

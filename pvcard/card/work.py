@@ -7,7 +7,7 @@ from typing import NamedTuple
 import numpy as np
 
 from pvcard.card_set import CardSet, Turning, curvature
-from pvcard.kinematics import crank_angle_at, place, travel_by_ratio
+from pvcard.kinematics import place, travel_by_ratio
 from pvcard.types import Floats
 from pvcard.uncertainty import Estimate, constant
 
@@ -137,20 +137,3 @@ def integral_at(cards: CardSet, turn: Turning, running: Running, crank_angle: Fl
     travel = place(known, cards.rod_ratio, cards.rod_sign).travel
     part = (pressure + there) / 2 * (travel - turn.motion.travel[row, left])
     return np.where(np.isfinite(crank_angle), running.total[row, left] + part, np.nan)
-
-
-def outward_angle(cards: CardSet, travel: Floats) -> Floats:
-    """Crank angle on the way out at which a fraction of the stroke has been travelled.
-
-    Parameters
-    ----------
-    cards : CardSet
-    travel : (cards,)
-        [-]
-
-    Returns
-    -------
-    crank_angle : (cards,)
-        Between 0 and 180. [deg]
-    """
-    return crank_angle_at(travel, cards.rod_ratio, cards.rod_sign)

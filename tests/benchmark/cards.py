@@ -10,7 +10,6 @@ from pvcard.card_set import CardSet
 from pvcard.cycle import Cylinders, ValveSide, Wall, steady_state
 from pvcard.gas import gas_from_composition, gas_table
 from pvcard.types import Floats
-from pvcard.uncertainty import INDEX, INPUTS, UNIT_INPUTS
 
 NATURAL_GAS = {"methane": 0.92, "ethane": 0.05, "nitrogen": 0.02, "carbon_dioxide": 0.01}
 SAMPLES = 720
@@ -90,33 +89,3 @@ def invented_cards(count: int, seed: int = 1) -> CardSet:
         gas=gas,
         table=table,
     )
-
-
-def usual_uncertainty(cards: CardSet) -> Floats:
-    """Standard uncertainties of all inputs, the defaults of a machine description."""
-    values = {
-        "dead_centre": 0.5,
-        "pressure_level": 0.01 * cards.suction_pressure,
-        "pressure_gain": 0.003,
-        "suction_pressure": 0.002 * cards.suction_pressure,
-        "discharge_pressure": 0.002 * cards.discharge_pressure,
-        "suction_temperature": 1.0,
-        "discharge_temperature": 1.0,
-        "bore": 5e-4,
-        "stroke": 5e-4,
-        "connecting_rod_length": 2e-3,
-        "clearance": 0.02,
-        "gas_exponent": 2e-3,
-        "speed": 1e-3,
-        "heat_multiplier": 0.5,
-        "wall_temperature": 0.15,
-        "heat_shape": 0.4,
-        "warming": 3.0,
-        "clearance_gas": 4.0,
-    }
-    result = np.zeros((len(cards.pressure), len(INPUTS)))
-    for name, value in values.items():
-        result[:, INDEX[name]] = value
-    for name in UNIT_INPUTS:
-        result[:, INDEX[name]] = 1.0
-    return result

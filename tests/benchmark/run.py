@@ -18,17 +18,18 @@ from pathlib import Path
 
 for _name in ("OMP_NUM_THREADS", "OPENBLAS_NUM_THREADS", "MKL_NUM_THREADS"):
     os.environ.setdefault(_name, "1")
-sys.path.insert(0, str(Path(__file__).parent))
+ROOT = Path(__file__).resolve().parents[2]
+sys.path.insert(0, str(ROOT))
 
-import naive_card  # noqa: E402  (one core must be asked for before NumPy is loaded)
-import numpy as np  # noqa: E402
-from cards import SAMPLES, invented_cards, usual_uncertainty  # noqa: E402
+import numpy as np  # noqa: E402  (one core must be asked for before NumPy is loaded)
 
 from pvcard.card.measure import CHUNK, measure  # noqa: E402
 from pvcard.card_set import CardSet  # noqa: E402
 from pvcard.types import Floats  # noqa: E402
+from tests.benchmark import naive_card  # noqa: E402
+from tests.benchmark.cards import SAMPLES, invented_cards  # noqa: E402
+from tests.cards import uncertainties  # noqa: E402
 
-ROOT = Path(__file__).resolve().parents[2]
 BATCH, NAIVE, REPEATS = 4096, 300, 3
 
 
@@ -54,10 +55,10 @@ def measure_all(cards: CardSet, unsure: Floats, *, with_uncertainty: bool) -> No
                 estimate.uncertainty(unsure[part])
 
 
-def naive_all(cards: CardSet, count: int) -> None:
+def naive_all(cards: CardSet, rows: list[int]) -> None:
     """The plain script, card by card."""
     grid = cards.crank_angle
-    for row in range(count):
+    for row in rows:
         naive_card.analyse_card(
             grid,
             cards.pressure[row],
@@ -75,11 +76,9 @@ def naive_all(cards: CardSet, count: int) -> None:
 def first_tier() -> dict[str, float]:
     """Card ends per second, without and with uncertainties, and against the plain script."""
     cards = invented_cards(BATCH)
-    unsure = usual_uncertainty(cards)
-    heads = np.flatnonzero(cards.rod_sign > 0)[:NAIVE]  # the plain script knows head ends only
-    plain = invented_cards(2 * NAIVE)
-    del heads
-    plain_time = best(lambda: naive_all(plain, NAIVE), 2) / NAIVE
+    unsure = uncertainties(cards)
+    heads = np.flatnonzero(cards.rod_sign > 0)[:NAIVE].tolist()  # the plain script knows no others
+    plain_time = best(lambda: naive_all(cards, heads), 2) / NAIVE
     bare = best(lambda: measure_all(cards, unsure, with_uncertainty=False)) / BATCH
     full = best(lambda: measure_all(cards, unsure, with_uncertainty=True)) / BATCH
     return {
@@ -116,7 +115,7 @@ def stream(count: int) -> dict[str, float]:
     done = 0
     while done < count:
         cards = invented_cards(2048, seed=done)
-        measure_all(cards, usual_uncertainty(cards), with_uncertainty=True)
+        measure_all(cards, uncertainties(cards), with_uncertainty=True)
         done += 2048
     peak = resource.getrusage(resource.RUSAGE_SELF).ru_maxrss / 1024
     return {
