@@ -16,8 +16,8 @@ from typing import NamedTuple
 
 import numpy as np
 
+from pvcard.card_set import Turning
 from pvcard.closed_lines import PLACE, Problem
-from pvcard.kinematics import place_from_sine
 from pvcard.line_fit import CORNERS, Fit
 from pvcard.types import Booleans, Floats, Integers
 from pvcard.uncertainty import Estimate, constant
@@ -57,6 +57,15 @@ class _Noise(NamedTuple):
     misfit: Floats  # rms of what the model leaves within the spans
 
 
+class _Path(NamedTuple):
+    """Samples beyond a span, each (cards, 1 + steps), the end of the span first."""
+
+    crank_angle: Floats  # deg
+    travel: Floats
+    cosine: Floats  # of the crank angle
+    measured: Floats  # ln p
+
+
 class _Departure(NamedTuple):
     crank_angle: Floats  # (cards, steps) deg, starting at the corner
     value: Floats  # (cards, steps), measured less modelled ln p
@@ -64,12 +73,12 @@ class _Departure(NamedTuple):
     spacing: float  # deg, mean distance of neighbours
 
 
-def valve_events(case: Problem, fit: Fit, white_noise: Floats) -> Events:
+def valve_events(case: Problem, fit: Fit, turn: Turning, white_noise: Floats) -> Events:
     """Opening and closing angles of each card.
 
     Parameters
     ----------
-    case, fit
+    case, fit, turn
         Of one batch.
     white_noise : (cards,)
         Standard deviation of single samples, relative to pressure. [-]
@@ -83,16 +92,23 @@ def valve_events(case: Problem, fit: Fit, white_noise: Floats) -> Events:
     half = int(np.searchsorted(case.cards.crank_angle, 180.0))
     last = len(case.cards.crank_angle) - 1
     expansion_end = _departure(
-        case, fit, 3, windows.expansion_last, +1, _OPENING_REACH_DEG, (0, half)
+        case, fit, turn, 3, windows.expansion_last, +1, _OPENING_REACH_DEG, (0, half)
     )
     compression_end = _departure(
-        case, fit, 1, windows.compression_last, +1, _OPENING_REACH_DEG, (half, last)
+        case, fit, turn, 1, windows.compression_last, +1, _OPENING_REACH_DEG, (half, last)
     )
     compression_start = _departure(
-        case, fit, 0, windows.compression_first, -1, _SUCTION_REACH_DEG, (half - half // 15, last)
+        case,
+        fit,
+        turn,
+        0,
+        windows.compression_first,
+        -1,
+        _SUCTION_REACH_DEG,
+        (half - half // 15, last),
     )
     expansion_start = _departure(
-        case, fit, 2, windows.expansion_first, -1, _DISCHARGE_REACH_DEG, (-half // 15, half)
+        case, fit, turn, 2, windows.expansion_first, -1, _DISCHARGE_REACH_DEG, (-half // 15, half)
     )
     noise = _Noise(white_noise, fit.misfit)
     return Events(
@@ -106,6 +122,7 @@ def valve_events(case: Problem, fit: Fit, white_noise: Floats) -> Events:
 def _departure(
     case: Problem,
     fit: Fit,
+    turning: Turning,
     corner: int,
     start: Integers,
     direction: int,
@@ -124,26 +141,33 @@ def _departure(
     index = index - turn * len(grid)
     node = CORNERS[corner]
     beyond = grid[index] + 360.0 * turn
-    angle = np.concatenate([case.crank_angle[:, node, None], beyond], axis=-1)
+    angle = _after(case.crank_angle[:, node], beyond)
     at_corner = case.ln_pressure[:, node] - fit.linear.residual[:, node]
     with np.errstate(invalid="ignore", divide="ignore"):
         shown = np.log(np.take_along_axis(cards.pressure, index, axis=-1))
-    measured = np.concatenate([at_corner[:, None], shown], axis=-1)
-    modelled = _extended(case, fit, corner, angle, measured)
-    return _Departure(angle[:, 1:], (measured - modelled)[:, 1:], inside, spacing * stride)
+    measured = _after(at_corner, shown)
+    path = _Path(
+        angle,
+        _after(case.declared.travel[:, node], np.take_along_axis(turning.motion.travel, index, -1)),
+        _after(case.cosine[:, node], turning.cosine[index]),
+        measured,
+    )
+    departure = measured - _extended(case, fit, corner, path)
+    return _Departure(angle[:, 1:], departure[:, 1:], inside, spacing * stride)
 
 
-def _extended(case: Problem, fit: Fit, corner: int, angle: Floats, measured: Floats) -> Floats:
-    """Modelled ln p along `angle`, from the corner in its first column."""
-    cards = case.cards
-    turned = np.radians(angle)
-    cosine = np.cos(turned)
-    at = place_from_sine(np.sin(turned), cosine, cards.rod_ratio[:, None], cards.rod_sign[:, None])
-    clear = fit.state[:, PLACE["clearance"], None] + at.travel
+def _after(first: Floats, others: Floats) -> Floats:
+    return np.concatenate([first[:, None], others], axis=-1)
+
+
+def _extended(case: Problem, fit: Fit, corner: int, path: _Path) -> Floats:
+    """Modelled ln p along a path, from the corner in its first column."""
+    clear = fit.state[:, PLACE["clearance"], None] + path.travel
     ln_volume = np.log(clear)
+    measured = path.measured
     exponent = _exponent_along(fit, corner, measured)
-    gain = _heat_along(case, fit, corner, cosine, clear, ln_volume, measured)
-    step = np.diff(turned) * (gain[:, 1:] + gain[:, :-1])
+    gain = _heat_along(case, fit, corner, path, clear, ln_volume)
+    step = np.diff(path.crank_angle) * (np.pi / 180) * (gain[:, 1:] + gain[:, :-1])
     step -= np.diff(ln_volume) * (exponent[:, 1:] + exponent[:, :-1])
     result = np.empty_like(measured)
     result[:, 0] = measured[:, 0]
@@ -167,10 +191,9 @@ def _heat_along(
     case: Problem,
     fit: Fit,
     corner: int,
-    cosine: Floats,
+    path: _Path,
     clear: Floats,
     ln_volume: Floats,
-    measured: Floats,
 ) -> Floats:
     """Change of modelled ln p by heat per radian beyond a span, scaled from its end.
 
@@ -189,10 +212,10 @@ def _heat_along(
     at_corner = case.ln_pressure[:, node] - np.log(cards.suction_pressure)
     first = start * np.exp(at_corner * (exponent - 1) / exponent)
     fall = ln_volume - ln_volume[:, :1]
-    product = np.exp(measured - measured[:, :1] + fall)
+    product = np.exp(path.measured - path.measured[:, :1] + fall)
     wall = suction + state[:, PLACE["wall"]] * (known.path.temperature - suction)
     difference = wall[:, None] - first[:, None] * product
-    difference *= 1 + state[:, PLACE["shape"], None] * (2 * np.square(cosine) - 1)
+    difference *= 1 + state[:, PLACE["shape"], None] * (2 * np.square(path.cosine) - 1)
     own = difference[:, :1]
     safe = np.where(np.abs(own) < 1.0, np.where(own < 0, -1.0, 1.0), own)
     depth = (cards.bore * cards.stroke * np.pi / (2 * cards.piston_area))[:, None]

@@ -90,7 +90,7 @@ def measure(
         )
         states = line_states(cards, known, inputs)
         at = crossings(case, fit, states.suction_pressure, states.discharge_pressure)
-        events = valve_events(case, fit, noise)
+        events = valve_events(case, fit, turn, noise)
         closed = windows.found & np.isfinite(fit.state[:, 0]) & np.isfinite(at[0].travel)
         sides = losses.suction_span(at), losses.discharge_span(at)
         columns = _columns(cards, turn, case, fit, at, events, states, noise, inputs)
