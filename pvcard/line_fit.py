@@ -62,8 +62,8 @@ _RANGES = (
     ("heat", -np.log(5.0), np.log(5.0)),
     ("wall", -0.5, 1.5),
     ("shape", -0.95, 2.0),
-    ("warming", -30.0, 60.0),
-    ("clearance_gas", -40.0, 40.0),
+    ("warming", -8.0, 45.0),
+    ("clearance_gas", -22.0, 30.0),
 )
 
 
@@ -146,6 +146,7 @@ def _solve(
     weight = _weights(case, white_noise)
     moving = np.flatnonzero(case.windows.found)
     part, own = case, priors
+    before = state.copy()
     for _ in range(ITERATIONS):
         if not len(moving):
             break
@@ -153,13 +154,20 @@ def _solve(
             part, own = taken(case, moving), _Priors(*(one[moving] for one in priors))
         linear = linearise(part, state[moving], everything=False)
         step, left = _step(linear, weight[moving], own, state[moving])
-        state[moving, : len(FREE)] -= step
+        lost = ~np.isfinite(left)  # outside the states of the gas: go half the way back
+        here = state[moving]
+        state[moving, : len(FREE)] -= np.where(lost[:, None], 0.0, step)
         _keep_within(state)
-        settled = ~(left > _SETTLED)
+        state[moving[lost]] = (here[lost] + before[moving[lost]]) / 2
+        before[moving[~lost]] = here[~lost]
+        settled = left <= _SETTLED
         moving = moving[~settled]
     state[~case.windows.found] = np.nan
     linear = linearise(case, state)
-    return state, linear, priors, _information(linear, weight, priors)
+    information = _information(linear, weight, priors)
+    unusable = ~np.all(np.isfinite(information), axis=(-1, -2))
+    state[unusable] = np.nan  # part of a span lies outside the states of the gas
+    return state, linear, priors, information
 
 
 def _imbalance(priors: _Priors, state: Floats) -> Floats:

@@ -14,20 +14,20 @@ from typing import Any, NamedTuple
 
 import numpy as np
 import pytest
-from scipy.interpolate import CubicSpline
 
 import pvcard
-from pvcard.ingest.recording import LineReadings, Recording
-from pvcard.machine import Cylinder, CylinderEnd, Machine
+from pvcard.ingest.recording import Recording
+from pvcard.machine import CylinderEnd, Machine
 from pvcard.results import RecordingResult
 from pvcard.simulate import CylinderSituation, Simulated, Situation, simulate_recordings
 from pvcard.simulate_export import write_simulated
-from pvcard.types import Floats
+from tests.synthetic import misdeclared, misread
 
 EXAMPLES = Path(__file__).parents[1] / "example_data"
 # Machine, its true law of wall heat, suction pressure [Pa], temperature [K] and speed [1/s].
 STANDS = (("N-3", "adair", 20e5, 295.0, 12.25), ("H-1", "woschni", 16e5, 308.0, 5.45))
 DAYS, DRAWS = 5, 12
+NOISE = 2e-4  # white, of every sample, relative
 Row = dict[str, Any]
 
 
@@ -150,66 +150,6 @@ class Reading(NamedTuple):
     recording: Recording
 
 
-def misdeclared(machine: Machine, rng: np.random.Generator) -> Machine:
-    """The machine as somebody might have measured it."""
-    unsure = machine.uncertainty
-
-    def end(own: CylinderEnd) -> CylinderEnd:
-        known = own.clearance or 0.0
-        return replace(own, clearance=max(known + rng.normal(0, unsure.clearance), 0.01))
-
-    def cylinder(own: Cylinder) -> Cylinder:
-        rod = own.connecting_rod_length * (1 + rng.normal(0, unsure.connecting_rod_length))
-        return replace(
-            own,
-            bore=own.bore * (1 + rng.normal(0, unsure.bore)),
-            stroke=own.stroke * (1 + rng.normal(0, unsure.stroke)),
-            connecting_rod_length=rod,
-            head_end=end(own.head_end),
-            crank_end=end(own.crank_end),
-        )
-
-    return replace(machine, cylinders=tuple(cylinder(one) for one in machine.cylinders))
-
-
-def misread_lines(
-    readings: LineReadings, machine: Machine, rng: np.random.Generator
-) -> LineReadings:
-    """Line readings as the gauges might have had them."""
-    unsure = machine.uncertainty
-    assert readings.suction_pressure is not None
-    assert readings.discharge_pressure is not None
-    assert readings.suction_temperature is not None
-    return replace(
-        readings,
-        suction_pressure=readings.suction_pressure * (1 + rng.normal(0, unsure.line_pressure)),
-        discharge_pressure=readings.discharge_pressure * (1 + rng.normal(0, unsure.line_pressure)),
-        suction_temperature=readings.suction_temperature + rng.normal(0, unsure.line_temperature),
-    )
-
-
-def misread(day: Day, machine: Machine, rng: np.random.Generator) -> Recording:
-    """The recording with a mark, zeros, gains, lines and speed as uncertain as declared."""
-    unsure, clean = machine.uncertainty, day.recording
-    assert clean.crank_angle is not None
-    assert clean.speed is not None
-    mark = rng.normal(0, unsure.dead_centre)
-    angle = np.append(clean.crank_angle, clean.crank_angle[0] + 360)
-    channels = []
-    for channel in clean.channels:
-        low = clean.lines[channel.cylinder].suction_pressure
-        assert low is not None
-        closed = np.append(channel.pressure, channel.pressure[0])
-        shown: Floats = CubicSpline(angle, closed, bc_type="periodic")(clean.crank_angle - mark)
-        shown = shown * (1 + rng.normal(0, unsure.pressure_gain))
-        shown = shown + rng.normal(0, unsure.pressure_level) * low
-        shown = shown * (1 + 2e-4 * rng.standard_normal(shown.shape))
-        channels.append(replace(channel, pressure=shown))
-    lines = {name: misread_lines(one, machine, rng) for name, one in clean.lines.items()}
-    speed = clean.speed * (1 + rng.normal(0, unsure.speed))
-    return replace(clean, channels=tuple(channels), lines=lines, speed=speed)
-
-
 @pytest.fixture(scope="module")
 def read(days: list[Day]) -> list[tuple[Reading, RecordingResult]]:
     """Every day read many times, each time with other errors, and what was made of it."""
@@ -218,7 +158,9 @@ def read(days: list[Day]) -> list[tuple[Reading, RecordingResult]]:
     for number, day in enumerate(days):
         for _ in range(DRAWS):
             machine = misdeclared(well_declared(day), rng)
-            readings.append(Reading(number, machine, misread(day, machine, rng)))
+            readings.append(
+                Reading(number, machine, misread(day.recording, machine, rng, noise=NOISE))
+            )
     found = pvcard.analyse(
         [one.recording for one in readings], [one.machine for one in readings]
     ).recordings
@@ -250,27 +192,38 @@ COVERED = (
 )
 
 
+def test_ordinary_errors_lose_no_figure(read: list[tuple[Reading, RecordingResult]]) -> None:
+    # LAW: errors as wide as declared are no reason to determine nothing: only a closing may hide
+    # in the noise.
+    lost = [
+        (result.recording["source"], row["cylinder"], row["end"], column, row["reason"][column])
+        for _, result in read
+        for row in result.ends
+        for column in COVERED
+        if row[column] is None and not column.endswith("closing_deg")
+    ]
+    assert not lost, f"{len(lost)} figures lost, the first: {lost[0]}"
+
+
 @pytest.mark.parametrize("column", COVERED)
 def test_two_uncertainties_cover_the_truth(
     days: list[Day], read: list[tuple[Reading, RecordingResult]], column: str
 ) -> None:
     # TRUTH: the simulated figure. LAW: JCGM 100: 95 % of normal errors lie within two standard
     # uncertainties; 480 ends of 10 days and 120 marks know that share to some 2 %.
-    far, unseen = [], 0
+    far = []
     for reading, result in read:
         true = truths(days[reading.day])
         for row in result.ends:
             own = true[row["cylinder"], row["end"]][column]
             if row[column] is None:
                 assert column in row["reason"]
-                unseen += 1
                 continue
             error = row[column] - own
             if column.endswith(("opening_deg", "closing_deg")):
                 error = (error + 180) % 360 - 180
             far.append(error / row[f"u_{column}"])
-    # Only an event may hide, and seldom.
-    assert unseen <= (0.05 * len(far) if column.endswith("closing_deg") else 0)
+    assert len(far) > 450
     within = float(np.mean(np.abs(far) <= 2))
     assert within >= 0.90, f"{within:.3f} within 2 u; rms {np.sqrt(np.mean(np.square(far))):.2f}"
 
@@ -286,9 +239,12 @@ def test_uncertainty_of_a_machine_covers_its_true_total(
         total = sum(end[column] for end in truths(days[reading.day]).values())
         machine = result.totals[-1]
         assert machine["scope"] == "machine"
+        if machine[column] is None:
+            continue
         error = machine[column] - total
         far.append(error / machine[f"u_{column}"])
         naive.append(error / np.linalg.norm([row[f"u_{column}"] for row in result.ends]))
+    assert len(far) > 110
     assert np.mean(np.abs(far) <= 2) >= 0.90
     if column == "indicated_power_kW":
         assert np.mean(np.abs(naive) <= 2) < 0.90

@@ -26,7 +26,8 @@ from pvcard.types import Floats
 from pvcard.uncertainty import INDEX, INPUTS, UNIT_INPUTS
 
 Progress = Callable[[str, float], None]
-_HOTTER, _COLDER = 90.0, 35.0  # K, that a table reaches beyond line and ideal temperatures
+# K, that a table reaches beyond line and ideal temperatures; colder only as far as the gas allows.
+_HOTTER, _COLDER = 100.0, (40.0, 32.0, 24.0, 16.0, 8.0)
 
 
 @dataclass(frozen=True, eq=False)
@@ -192,9 +193,14 @@ def _table(jobs: list[Job], gas: Gas) -> GasTable:
         )
         for one in lines
     )
-    return gas_table(
-        gas, pressure=(0.9 * low, 1.15 * high), temperature=(cold - _COLDER, hot + _HOTTER)
-    )
+    for reach in _COLDER:
+        try:
+            return gas_table(
+                gas, pressure=(0.9 * low, 1.15 * high), temperature=(cold - reach, hot + _HOTTER)
+            )
+        except GasError as error:
+            problem = error
+    raise problem
 
 
 def card_set(jobs: Sequence[Job], gas: Gas, table: GasTable) -> CardSet:

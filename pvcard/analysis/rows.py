@@ -183,7 +183,8 @@ def _figure(outcome: Outcome, column: str) -> tuple[float | None, float | None]:
         return None, None
     if not estimate.slopes.shape[1]:
         return value, None
-    return value, float(estimate.uncertainty(outcome.input_uncertainty[None])[0])
+    u = float(estimate.uncertainty(outcome.input_uncertainty[None])[0])
+    return (value, u) if np.isfinite(u) else (None, None)
 
 
 def _reason(column: str, outcome: Outcome) -> str:
@@ -200,7 +201,10 @@ def _reason(column: str, outcome: Outcome) -> str:
     if measured is not None and not measured.case.windows.found[outcome.row]:
         return _FLAT
     if measured is not None and not measured.closed[outcome.row]:
-        return "the closed parts of the card lie outside the states for which the gas was computed"
+        return (
+            "the closed parts of the card fit no state of the gas near the line values: the trace "
+            "rings, or pressures, clearance or gas are wrong"
+        )
     if column.endswith(("opening_deg", "closing_deg")):
         return "the trace shows no such event within reach of the closed parts"
     if column.endswith("flow_area_cm2"):

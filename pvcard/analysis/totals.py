@@ -126,7 +126,8 @@ def _sum(
     shares = _shares(part, column, source)
     if shares is None:
         return total, None
-    return total, sum_uncertainty(shares, [row["cylinder"] for row, _ in part])
+    u = sum_uncertainty(shares, [row["cylinder"] for row, _ in part])
+    return total, u if np.isfinite(u) else None
 
 
 def _specific(

@@ -157,7 +157,7 @@ def _columns(
     inputs: int,
 ) -> Columns:
     size = geometry(cards, inputs)
-    work = indicated_work(cards, turn, noise * cards.suction_pressure, inputs)
+    work = indicated_work(cards, turn, noise, inputs)
     work = work.depending_on("turn_scatter", work.value)
     clearance = Estimate(fit.state[:, PLACE["clearance"]], fit.slopes[:, PLACE["clearance"]])
     ideal = ideal_card(clearance, size.swept_volume, states)
@@ -226,7 +226,7 @@ def _losses(
 ) -> Columns:
     running = running_integral(cards, turn)
     swept = cards.swept_volume
-    white = noise * cards.suction_pressure * swept * np.sqrt(2.5 / len(cards.crank_angle))
+    white = noise * swept * np.sqrt(2.5 / len(cards.crank_angle))
     known, path = case.references.suction, case.references.path
     result: Columns = {}
     for side, span, pressure, opening, density, upstream in (
@@ -248,7 +248,7 @@ def _losses(
         ),
     ):
         loss = losses.valve_loss(
-            cards, turn, running, span, pressure, (f"noise_{side}_loss", white)
+            cards, turn, running, span, pressure, (f"noise_{side}_loss", white * upstream)
         )
         result[f"{side}_valve_loss_kW"] = loss * size.speed / 1e3
         result[f"{side}_valve_loss_pct"] = result[f"{side}_valve_loss_kW"] / power * 100

@@ -22,7 +22,7 @@ def indicated_work(cards: CardSet, turn: Turning, white_noise: Floats, inputs: i
     cards, turn
         Of one batch.
     white_noise : (cards,)
-        Standard deviation of single samples. [Pa]
+        Standard deviation of single samples, relative to pressure. [-]
     inputs : number of inputs carried, 0 for none
 
     Returns
@@ -57,7 +57,7 @@ def indicated_work(cards: CardSet, turn: Turning, white_noise: Floats, inputs: i
     estimate = estimate.depending_on("bore", work * cards.area_by_bore)
     estimate = estimate.depending_on("stroke", work + by_ratio)
     estimate = estimate.depending_on("connecting_rod_length", -by_ratio)
-    spread = np.sqrt(np.einsum("cs,cs,s->c", slope, slope, np.square(turn.weight)))
+    spread = np.sqrt(np.einsum("cs,cs->c", np.square(weighted), np.square(slope)))
     noise = np.hypot(white_noise * swept * spread, _spacing_error(cards, turn, loop) * swept)
     return estimate.depending_on("noise_work", noise)
 
