@@ -7,11 +7,15 @@ from dataclasses import replace
 import numpy as np
 import pytest
 
+from pvcard.card.ideal import ideal_card, line_states
 from pvcard.card.measure import measure
 from pvcard.card.work import indicated_work
 from pvcard.card_set import CardSet, turning
+from pvcard.closed_lines import references
+from pvcard.gas import ExponentGas, gas_table
 from pvcard.kinematics import CRANK_END, HEAD_END, crank_angle_at, motion
 from pvcard.types import Floats
+from pvcard.uncertainty import constant
 from tests.cards import ideal_cards, ideal_pressure, uncertainties
 
 
@@ -172,3 +176,87 @@ def test_thin_loop_has_power_but_no_lines() -> None:
     found = measure(idle, uncertainties(idle))
     assert not found.closed[0]
     assert found.columns["indicated_power_kW"].value[0] > 0
+
+
+def test_real_gas_efficiency_is_a_mass_balance_of_the_clearance() -> None:
+    # SOURCE: HBK-03 in data/check_values_core.csv: 1 - C ((Zs/Zd) r^(1/k) - 1), k the exponent of
+    # temperature; r = 3, C = 0.10, k = 1.27, Zs = 0.98, Zd = 0.96.
+    ratio, k, z_suction, z_discharge = 3.0, 1.27, 0.98, 0.96
+    squeeze = z_suction / z_discharge * ratio ** (1 / k)
+    gas = ExponentGas(
+        float(np.log(ratio) / np.log(squeeze)),
+        z_suction,
+        0.018,
+        compressibility_slope=float(np.log(z_discharge / z_suction) / np.log(ratio)),
+        suction_pressure=10e5,
+        pressure_ratio=ratio,
+    )
+    table = gas_table(gas, pressure=(5e5, 40e5), temperature=(250.0, 520.0))
+    cards = replace(ideal_cards(samples=36), gas=gas, table=table)
+    known = references(cards)
+    assert known.path.temperature_exponent[0] == pytest.approx(k, rel=1e-4)
+    states = line_states(cards, known, 0)
+    card = ideal_card(constant(np.array([0.10]), 0), constant(np.array([0.01]), 0), states)
+    assert 100 * card.suction_efficiency.value[0] == pytest.approx(85.7539570587, abs=1e-3)
+
+
+@pytest.mark.parametrize(("n", "expected"), [(1.3, 3.117), (1.4, 3.247)])
+def test_power_at_falling_suction_pressure_has_its_maximum(n: float, expected: float) -> None:
+    # LAW: fixed discharge pressure, no clearance: greatest work at r = n^(n / (n - 1)), from
+    # d/dr of (r^((n-1)/n) - 1) / r.
+    assert n ** (n / (n - 1)) == pytest.approx(expected, abs=5e-4)
+    ratios = np.linspace(expected - 0.3, expected + 0.3, 121)
+    work = []
+    for ratio in ratios:
+        cards = ideal_cards(low=30e5 / ratio, high=30e5, exponent=n, samples=36)
+        states = line_states(cards, references(cards), 0)
+        card = ideal_card(constant(np.zeros(1), 0), constant(np.array([0.01]), 0), states)
+        work.append(float(card.work.value[0]))
+    assert ratios[int(np.argmax(work))] == pytest.approx(expected, abs=0.03)
+
+
+@pytest.mark.parametrize("sign", [HEAD_END, CRANK_END])
+def test_ideal_card_has_no_losses_and_delivers_what_it_draws(sign: float) -> None:
+    # LAW: p V^k between the lines: indicated = theoretical work, both losses nothing, flow
+    # rho VE Vs N at either line.
+    cards = ideal_cards(sign=sign, samples=1440, gas_constant=500.0, temperature=300.0)
+    found = values(cards)
+    power = found["indicated_power_kW"][0]
+    assert found["ideal_power_kW"][0] == pytest.approx(power, rel=1e-3)
+    for name in ("suction_valve_loss_kW", "discharge_valve_loss_kW", "other_loss_kW"):
+        assert abs(found[name][0]) < 2e-3 * power, name
+    density = 10e5 / (500.0 * 300.0)
+    flow = density * (1.12 - 0.12 * 3 ** (1 / 1.3)) * 0.01 * 10 * 3600
+    assert found["discharge_flow_kg_h"][0] == pytest.approx(flow, rel=0.01)
+    assert found["flow_ratio"][0] == pytest.approx(1.0, abs=2e-3)
+    assert found["isentropic_efficiency_pct"][0] == pytest.approx(100.0, abs=1.0)
+    hot = 300 * 3 ** (0.3 / 1.3) - 273.15
+    assert found["ideal_discharge_temperature_degC"][0] == pytest.approx(hot, abs=0.01)
+
+
+def test_parts_of_the_power_add_up_for_any_card() -> None:
+    # LAW: indicated = theoretical + both losses + the rest, whatever the trace looks like.
+    cards = ideal_cards(clearance=np.array([0.08, 0.2]), count=2)
+    wave = 1 + 0.02 * np.sin(np.radians(7 * cards.crank_angle))
+    found = values(replace(cards, pressure=cards.pressure * wave))
+    parts = ("ideal_power_kW", "suction_valve_loss_kW", "discharge_valve_loss_kW", "other_loss_kW")
+    total = sum(found[name] for name in parts)
+    np.testing.assert_allclose(total, found["indicated_power_kW"], rtol=1e-12)
+
+
+def test_figures_scale_with_the_size_of_the_machine() -> None:
+    # LAW: similarity of the loop: work with swept volume, power with speed; fractions stay.
+    small, large = values(ideal_cards()), values(ideal_cards(swept=0.03, speed=20.0))
+    assert large["indicated_work_kJ"][0] == pytest.approx(3 * small["indicated_work_kJ"][0])
+    assert large["indicated_power_kW"][0] == pytest.approx(6 * small["indicated_power_kW"][0])
+    for name in ("mean_effective_pressure_bar", "pressure_ratio", "pressure_max_bar"):
+        assert large[name][0] == pytest.approx(small[name][0])
+
+
+def test_work_does_not_depend_on_the_zero_of_the_transducer() -> None:
+    # LAW: the closed integral of a constant is nothing.
+    cards = ideal_cards()
+    shifted = replace(cards, pressure=cards.pressure + 0.3e5)
+    found, plain = values(shifted), values(cards)
+    assert found["indicated_power_kW"][0] == pytest.approx(plain["indicated_power_kW"][0], rel=1e-6)
+    assert found["pressure_max_bar"][0] == pytest.approx(plain["pressure_max_bar"][0] + 0.3)

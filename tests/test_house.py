@@ -80,8 +80,11 @@ def imports(path: Path) -> set[str]:
     for node in ast.walk(ast.parse(path.read_text(encoding="utf-8"))):
         if isinstance(node, ast.Import):
             found |= {alias.name for alias in node.names}
-        elif isinstance(node, ast.ImportFrom) and node.module:
-            found.add(node.module)
+        elif isinstance(node, ast.ImportFrom):
+            assert not node.level, f"{path}: imports say the whole name"
+            found.add(str(node.module))
+            if node.module == "pvcard":  # a room, unless it is one of the public names
+                found |= {f"pvcard.{alias.name}" for alias in node.names if alias.name in LEVEL}
     return found
 
 
@@ -155,6 +158,59 @@ def test_public_functions_say_what_they_take_and_give(name: str) -> None:
             listed = text.split("Parameters\n---")[1]
             missing = [one for one in taken if one not in listed]
             assert not missing, f"{name}.{own} says nothing of {missing}"
+
+
+def calls(path: Path) -> set[str]:
+    """Dotted names of everything that a file calls."""
+    return {
+        ast.unparse(node.func)
+        for node in ast.walk(ast.parse(path.read_text(encoding="utf-8")))
+        if isinstance(node, ast.Call)
+    }
+
+
+@pytest.mark.parametrize("path", FILES, ids=lambda path: str(path.relative_to(ROOT)))
+def test_rooms_neither_print_nor_draw_chance_nor_show(path: Path) -> None:
+    # LAW: style of the house: only the command line prints; chance comes through a generator;
+    # figures are drawn on axes that are handed in.
+    found = calls(path)
+    if room(path) not in ("cli", "__main__", "progress") and room(path) != "simulate_plant":
+        assert "print" not in found
+    assert not {name for name in found if name.startswith(("np.random.", "numpy.random."))} - {
+        "np.random.default_rng",
+        "np.random.SeedSequence",
+    }
+    assert not any("pyplot" in name for name in imports(path))
+
+
+def test_every_module_has_its_place() -> None:
+    # LAW: a room that no level names would be looked into from anywhere.
+    assert {room(path) for path in FILES} == set(LEVEL)
+
+
+def test_fence_sees_every_way_to_import(tmp_path: Path) -> None:
+    # LAW: the test of the imports has to notice what it forbids.
+    path = tmp_path / "room.py"
+    for text in (
+        "import pvcard.analysis\n",
+        "from pvcard import analysis\n",
+        "from pvcard.analysis import analyse\n",
+        "def later():\n    from pvcard.analysis.front import analyse\n",
+    ):
+        path.write_text(text, encoding="utf-8")
+        found = imports(path)
+        assert any(name.startswith("pvcard.analysis") for name in found), text
+    path.write_text("from . import analysis\n", encoding="utf-8")
+    with pytest.raises(AssertionError, match="whole name"):
+        imports(path)
+
+
+def test_public_front_is_what_it_says() -> None:
+    # LAW: everything promised can be had, nothing else is promised.
+    for name in pvcard.__all__:
+        assert getattr(pvcard, name) is not None
+    with pytest.raises(AttributeError, match="no attribute 'Pump'"):
+        pvcard.Pump  # noqa: B018
 
 
 def test_modules_stay_readable() -> None:

@@ -118,3 +118,15 @@ def test_inputs_stay_as_they_are() -> None:
     angle = ANGLE.copy()
     motion(angle, 0.2, HEAD_END)
     np.testing.assert_array_equal(angle, ANGLE)
+
+
+def test_books_that_cut_the_series_are_near() -> None:
+    # SOURCE: KIN-07, KIN-12: Khurmi and Gupta, examples 15.3 and 15.4: fastest at 74.955 deg with
+    # a rod of 1 m on a crank of 0.3 m, no acceleration at 79.272 deg with 1.5 m on 0.3 m, both with
+    # two terms of the series; KIN-09: exact 74.529 deg.
+    fine = np.linspace(60.0, 90.0, 30001)
+    fastest = fine[np.argmax(motion(fine, 0.3, HEAD_END).slope)]
+    assert fastest == pytest.approx(74.5289, abs=2e-3)
+    assert fastest == pytest.approx(74.955, abs=0.5)
+    still = fine[np.argmin(np.abs(acceleration(fine, 0.3, 1.5, 3.0)))]
+    assert still == pytest.approx(79.272, abs=0.25)

@@ -126,7 +126,8 @@ def _seen(job: Job, outcome: Outcome) -> Seen:
 def _idle(job: Job) -> bool:
     lines = job.trace.lines
     rise = lines.discharge_pressure - lines.suction_pressure
-    return bool(job.trace.pressure.max() < lines.suction_pressure + _IDLE_RISE * rise)
+    low, high = job.trace.pressure.min(), job.trace.pressure.max()
+    return bool(low > 0 and high < lines.suction_pressure + _IDLE_RISE * rise)
 
 
 def _settle_steps(

@@ -2,10 +2,9 @@
 
 from __future__ import annotations
 
-from typing import TYPE_CHECKING
-
 import numpy as np
 
+from pvcard.card.geometry import Geometry
 from pvcard.card.ideal import LineStates
 from pvcard.card.lines import Crossings, stroke_fractions
 from pvcard.card_set import CardSet
@@ -13,9 +12,6 @@ from pvcard.closed_lines import PLACE, Problem
 from pvcard.line_fit import Fit
 from pvcard.types import Floats
 from pvcard.uncertainty import Estimate
-
-if TYPE_CHECKING:
-    from pvcard.card.measure import Geometry
 
 
 def capacity(

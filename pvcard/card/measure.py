@@ -4,12 +4,12 @@ from __future__ import annotations
 
 from collections.abc import Iterator
 from dataclasses import dataclass
-from typing import NamedTuple
 
 import numpy as np
 
 from pvcard.card import losses
 from pvcard.card.capacity import capacity
+from pvcard.card.geometry import Geometry, geometry
 from pvcard.card.ideal import LineStates, ideal_card, line_states
 from pvcard.card.lines import Crossings, crossings, polytropic_exponents
 from pvcard.card.work import indicated_work, running_integral
@@ -23,20 +23,12 @@ from pvcard.uncertainty import INDEX, INPUTS, Estimate, constant
 from pvcard.windows import closed_windows
 
 Columns = dict[str, Estimate]
-CHUNK = 512  # cards worked on at once, so that a batch stays in the processor's cache
+CHUNK = 1024  # cards worked on at once, so that a batch stays in the processor's cache
 AREA_MODEL = 0.08  # relative: one constant area for a plate that moves (common practice, no source)
 # Of line pressure: how far its mean at an open valve may lie off the mean of the line (no source).
 PULSATION = 0.005
 # Of a peak beyond line pressure: what the ringing of an unknown passage may add to it (no source).
 RINGING = 0.2
-
-
-class Geometry(NamedTuple):
-    """Dimensions as estimates; each (cards,)."""
-
-    area: Estimate  # m2
-    swept_volume: Estimate  # m3
-    speed: Estimate  # rev/s
 
 
 @dataclass(frozen=True, eq=False)
@@ -124,25 +116,6 @@ def measure_without_gas(cards: CardSet, *, with_uncertainty: bool = True) -> Col
     }
     columns.update(_peaks(cards, np.zeros(len(cards.pressure)), inputs))
     return columns
-
-
-def geometry(cards: CardSet, inputs: int) -> Geometry:
-    """Dimensions of the ends as estimates.
-
-    Parameters
-    ----------
-    cards : CardSet
-    inputs : number of inputs carried, 0 for none
-
-    Returns
-    -------
-    Geometry
-    """
-    area = constant(cards.piston_area, inputs)
-    area = area.depending_on("bore", cards.piston_area * cards.area_by_bore)
-    stroke = constant(cards.stroke, inputs).depending_on("stroke", cards.stroke)
-    speed = constant(cards.speed, inputs).depending_on("speed", cards.speed)
-    return Geometry(area, area * stroke, speed)
 
 
 def _columns(
