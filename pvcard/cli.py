@@ -19,6 +19,7 @@ if TYPE_CHECKING:
 
 DONE, WITH_FINDINGS, UNUSABLE = 0, 1, 2
 _SEVERITIES = ("note", "watch", "act")
+_CSV_PARTS = ("cylinders", "totals", "findings", "repairs")
 
 _EXAMPLES = """examples:
   pvcard analyse reading.csv --machine machine.toml
@@ -143,8 +144,9 @@ def _analysed(options: argparse.Namespace, *, with_views: bool) -> Analysis:
 def _analyse(options: argparse.Namespace) -> int:
     from pvcard.tables import as_csv_files, as_json, as_table, write_text
 
-    analysis = _analysed(options, with_views=False)
     path = Path(options.output) if options.output else None
+    _spare_inputs(options, path)
+    analysis = _analysed(options, with_views=False)
     if options.format == "csv":
         files = as_csv_files(analysis)
         if path is None:
@@ -159,6 +161,26 @@ def _analyse(options: argparse.Namespace) -> int:
             write_text({path: text})
     _messages(analysis)
     return _status(analysis, options.fail_on)
+
+
+def _spare_inputs(options: argparse.Namespace, path: Path | None) -> None:
+    """Refuse to write the result over one of the files it is made from."""
+    from pvcard.errors import InputError
+
+    if path is None:
+        return
+    targets = [path]
+    if getattr(options, "format", "") == "csv":
+        targets += [_beside(path, part) for part in _CSV_PARTS]
+    inputs = [*options.exports, options.machine, *([options.columns] if options.columns else [])]
+    read = {Path(one).resolve() for one in inputs}
+    for target in targets:
+        if target.resolve() in read:
+            raise InputError(
+                "the result would overwrite an input",
+                file=str(target),
+                expected="another file behind --output",
+            )
 
 
 def _beside(path: Path, suffix: str) -> Path:

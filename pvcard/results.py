@@ -26,6 +26,7 @@ class RecordingResult:
     findings: list[Row]
     notes: tuple[str, ...] = ()
     views: dict[tuple[str, str], CardView] = field(default_factory=dict)
+    base_state: tuple[float, float] = (101325.0, 288.15)  # Pa, K, of standard flow
 
     def as_json(self) -> Row:
         """Return the object that stands in the list ``recordings`` of the JSON output."""

@@ -11,7 +11,7 @@ import os
 import tempfile
 from collections.abc import Iterable, Mapping
 from pathlib import Path
-from typing import Any
+from typing import Any, NamedTuple
 
 from pvcard.errors import InputError
 from pvcard.quantities import END_IDENTITY, QUANTITIES, TOTAL_QUANTITIES, Quantity
@@ -107,24 +107,28 @@ def write_text(files: Mapping[Path, str]) -> None:
     InputError
         If a folder cannot be written to; nothing is left behind then.
     """
+    for path in files:
+        if path.is_dir():
+            raise InputError("the result cannot be written", file=str(path), found="a folder")
     waiting: list[tuple[str, Path]] = []
+    target = next(iter(files))
     try:
-        for path, text in files.items():
-            handle, name = tempfile.mkstemp(prefix=f".{path.name}.", dir=path.parent or ".")
-            waiting.append((name, path))
+        for target, text in files.items():
+            handle, name = tempfile.mkstemp(prefix=f".{target.name}.", dir=target.parent or ".")
+            waiting.append((name, target))
             with os.fdopen(handle, "w", encoding="utf-8", newline="") as file:
                 file.write(text)
                 file.flush()
                 os.fsync(file.fileno())
             os.chmod(name, 0o644)
         while waiting:
-            name, path = waiting[-1]
-            os.replace(name, path)
+            name, target = waiting[-1]
+            os.replace(name, target)
             waiting.pop()
     except OSError as error:
         raise InputError(
             "the result cannot be written",
-            file=str(error.filename2 or error.filename or next(iter(files))),
+            file=str(target),
             found=error.strerror,
             expected="a folder that exists and may be written to",
         ) from error
@@ -176,6 +180,7 @@ def as_table(analysis: Analysis, units: str = "si") -> str:
 
 
 def _recording_table(one: RecordingResult, units: str) -> str:
+    display = Display(units, *one.base_state)
     facts = one.recording
     head = [f"{facts['machine']}  {facts['time'] or 'no time'}  {facts['source']}"]
     head.append(
@@ -190,8 +195,8 @@ def _recording_table(one: RecordingResult, units: str) -> str:
         if any(row[name] is not None for name in QUANTITIES if name not in END_IDENTITY)
     ]
     for first in range(0, len(rows), _COLUMNS_ACROSS):
-        lines += _ends_block(rows[first : first + _COLUMNS_ACROSS], units)
-    lines += _totals_block(one.totals, units)
+        lines += _ends_block(rows[first : first + _COLUMNS_ACROSS], display)
+    lines += _totals_block(one.totals, display)
     for finding in one.findings:
         lines.append(f"{finding['severity'].upper()}: {finding['text']}")
         if finding["caution"]:
@@ -204,24 +209,38 @@ def _recording_table(one: RecordingResult, units: str) -> str:
     return "\n".join(lines) + "\n"
 
 
-def shown_unit(quantity: Quantity, units: str) -> DisplayUnit:
+class Display(NamedTuple):
+    """System of units of a table, with the base state of its standard flows."""
+
+    units: str  # "si" or "us"
+    base_pressure: float = 101325.0  # Pa
+    base_temperature: float = 288.15  # K
+
+
+def shown_unit(quantity: Quantity, display: Display) -> DisplayUnit:
     """Unit in which a column is shown.
 
     Parameters
     ----------
     quantity : from the register
-    units : "si" or "us"
+    display : Display
 
     Returns
     -------
     DisplayUnit
     """
     difference = quantity.column in _DIFFERENCES or "margin" in quantity.column
-    system = "us" if units == "us" else "si"
-    return display_unit(quantity.unit, system, difference=difference)
+    system = "us" if display.units == "us" else "si"
+    return display_unit(
+        quantity.unit,
+        system,
+        difference=difference,
+        base_pressure=display.base_pressure,
+        base_temperature=display.base_temperature,
+    )
 
 
-def _ends_block(rows: list[Row], units: str) -> list[str]:
+def _ends_block(rows: list[Row], display: Display) -> list[str]:
     width = 20
     label = 46
     titles = "".join(f"{row['cylinder']} {row['end']}"[: width - 1].rjust(width) for row in rows)
@@ -231,7 +250,7 @@ def _ends_block(rows: list[Row], units: str) -> list[str]:
         for quantity in QUANTITIES.values():
             if quantity.group != group or all(row[quantity.column] is None for row in rows):
                 continue
-            unit = shown_unit(quantity, units)
+            unit = shown_unit(quantity, display)
             name = f"{quantity.label}{f' [{unit.label}]' if unit.label else ''}"
             cells = "".join(_shown(row, quantity, unit).rjust(width) for row in rows)
             block.append(f"  {name[: label - 3]:<{label - 2}}{cells}")
@@ -247,7 +266,7 @@ def _shown(row: Row, quantity: Quantity, unit: DisplayUnit) -> str:
     return figure_text(unit.value(value), None if u is None else unit.uncertainty(u))
 
 
-def _totals_block(totals: list[Row], units: str) -> list[str]:
+def _totals_block(totals: list[Row], display: Display) -> list[str]:
     shown = [
         quantity
         for quantity in TOTAL_QUANTITIES.values()
@@ -259,7 +278,7 @@ def _totals_block(totals: list[Row], units: str) -> list[str]:
         for quantity in shown:
             if row[quantity.column] is None:
                 continue
-            unit = shown_unit(quantity, units)
+            unit = shown_unit(quantity, display)
             parts.append(f"{quantity.label} {_shown(row, quantity, unit)} {unit.label}".rstrip())
         lines.append(f"  {row['scope']} {row['name']}: {'; '.join(parts) or 'not determined'}")
     return [*lines, ""]

@@ -165,7 +165,9 @@ def _measure_part(jobs: list[Job], gas: Gas, with_uncertainty: bool) -> list[Out
     try:
         table = _table(jobs, gas)
     except GasError as error:
-        return [_without_gas(job, error.message(), with_uncertainty) for job in jobs]
+        if len(jobs) > 1:  # one odd trace must not take the figures of its neighbours
+            return [_measure_part([job], gas, with_uncertainty)[0] for job in jobs]
+        return [_without_gas(jobs[0], error.message(), with_uncertainty)]
     cards = card_set(jobs, gas, table)
     unsure = input_uncertainty(jobs, gas)
     measured = measure(cards, unsure, with_uncertainty=with_uncertainty)

@@ -198,6 +198,7 @@ def _result(
         findings_of(machine, rows, totals, idle),
         tuple(gathered.notes),
         views,
+        (machine.base_pressure, machine.base_temperature),
     )
 
 

@@ -26,6 +26,11 @@ _FLAT = (
     "the trace does not run from suction to discharge pressure and back: the end does not "
     "compress, or a line pressure or unit is wrong"
 )
+_FEWEST = 90  # samples a turn
+_COARSE = (
+    f"too few samples a turn for the closed parts of the card: they need {_FEWEST} or more; or the "
+    "end does not compress"
+)
 # Line readings that are shown even where nothing could be measured against them.
 _READ = (
     "suction_pressure_bar",
@@ -199,7 +204,7 @@ def _reason(column: str, outcome: Outcome) -> str:
         return "the export gives no discharge temperature"
     measured = outcome.measured
     if measured is not None and not measured.case.windows.found[outcome.row]:
-        return _FLAT
+        return _COARSE if len(measured.case.cards.crank_angle) < _FEWEST else _FLAT
     if measured is not None and not measured.closed[outcome.row]:
         return (
             "the closed parts of the card fit no state of the gas near the line values: the trace "

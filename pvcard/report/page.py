@@ -10,7 +10,7 @@ from pvcard.quantities import QUANTITIES, TOTAL_QUANTITIES, Quantity
 from pvcard.report.figures import Drawing, inline
 from pvcard.report.style import CSS
 from pvcard.results import RecordingResult
-from pvcard.tables import GROUPS, figure_text, shown_unit
+from pvcard.tables import GROUPS, Display, figure_text, shown_unit
 
 Row = dict[str, Any]
 _SEVERITY_ORDER = ("act", "watch", "note")
@@ -41,15 +41,16 @@ def page(
     str
         A whole document that needs no other file.
     """
+    display = Display(units, *one.base_state)
     facts = one.recording
     body = [
         f"<h1>{escape(facts['machine'])}</h1>",
         f"<p class=soft>Cylinder pressure reading of {escape(_time(facts['time']))}</p>",
-        _facts(one, units),
+        _facts(one, display),
         "<h2>In short</h2>",
         *_findings(one.findings),
         "<div class=ends>",
-        *[_end_summary(one, row, units) for row in one.ends],
+        *[_end_summary(one, row, display) for row in one.ends],
         "</div>",
         *_handling(one),
     ]
@@ -59,7 +60,7 @@ def page(
         body.append("</div>")
     if split:
         body.append(f"<h2>Power</h2><figure class=wide>{inline(split)}</figure>")
-    body += _tables(one, units)
+    body += _tables(one, display)
     body += _missing(one)
     body.append("<h2>Cautions</h2><div class=caution>")
     body += [f"<p>{escape(text)}</p>" for text in _CAUTIONS]
@@ -101,14 +102,15 @@ def index(entries: Sequence[tuple[RecordingResult, str]], units: str) -> str:
     power, flow = TOTAL_QUANTITIES["indicated_power_kW"], TOTAL_QUANTITIES["standard_flow_m3_h"]
     specific = TOTAL_QUANTITIES["specific_power_kWh_per_1000_m3"]
     shown = (power, flow, specific)
-    head = "".join(f"<th>{escape(_titled(one, units))}</th>" for one in shown)
+    head = "".join(f"<th>{escape(_titled(one, Display(units)))}</th>" for one in shown)
     lines = [
         "<h1>Recordings</h1><div class=scroll><table><thead><tr><th>Machine and time</th>"
         f"{head}<th>Findings</th></tr></thead><tbody>"
     ]
     for one, name in entries:
         total = next((row for row in one.totals if row["scope"] == "machine"), {})
-        cells = "".join(f"<td>{_cell(total, quantity, units)}</td>" for quantity in shown)
+        display = Display(units, *one.base_state)
+        cells = "".join(f"<td>{_cell(total, quantity, display)}</td>" for quantity in shown)
         title = f"{one.recording['machine']}, {_time(one.recording['time'])}"
         lines.append(
             f'<tr><td><a href="{escape(name, quote=True)}">{escape(title)}</a></td>{cells}'
@@ -137,22 +139,22 @@ def _time(time: str | None) -> str:
     return time.replace("T", " ").replace("+00:00", " UTC") if time else "an unknown time"
 
 
-def _titled(quantity: Quantity, units: str) -> str:
-    label = shown_unit(quantity, units).label
+def _titled(quantity: Quantity, display: Display) -> str:
+    label = shown_unit(quantity, display).label
     return f"{quantity.label} [{label}]" if label else quantity.label
 
 
-def _cell(row: Row, quantity: Quantity, units: str) -> str:
+def _cell(row: Row, quantity: Quantity, display: Display) -> str:
     value, u = row.get(quantity.column), row.get(f"u_{quantity.column}")
     if value is None:
         return "not determined"
     if isinstance(value, str):
         return escape(value)
-    unit = shown_unit(quantity, units)
+    unit = shown_unit(quantity, display)
     return figure_text(unit.value(value), None if u is None else unit.uncertainty(u))
 
 
-def _facts(one: RecordingResult, units: str) -> str:
+def _facts(one: RecordingResult, display: Display) -> str:
     facts = one.recording
     turns = facts["cycles"]
     items = [
@@ -167,9 +169,9 @@ def _facts(one: RecordingResult, units: str) -> str:
     for column in ("indicated_power_kW", "standard_flow_m3_h", "driver_load_pct"):
         if total and total[column] is not None:
             quantity = TOTAL_QUANTITIES[column]
-            unit = shown_unit(quantity, units).label
+            unit = shown_unit(quantity, display).label
             label = quantity.label.lower()
-            items.append(f"{label} of the machine {_cell(total, quantity, units)} {unit}")
+            items.append(f"{label} of the machine {_cell(total, quantity, display)} {unit}")
     listed = "".join(f"<li>{escape(item)}</li>" for item in items if item)
     return f"<ul class=facts>{listed}</ul>"
 
@@ -187,7 +189,7 @@ def _findings(findings: Sequence[Row]) -> list[str]:
     return lines or ["<p class=soft>No findings from the declared limits.</p>"]
 
 
-def _end_summary(one: RecordingResult, row: Row, units: str) -> str:
+def _end_summary(one: RecordingResult, row: Row, display: Display) -> str:
     """What an engineer says of an end in a breath."""
     name = escape(f"{row['cylinder']} {row['end']} end")
     kind = escape(row["end"])
@@ -198,8 +200,8 @@ def _end_summary(one: RecordingResult, row: Row, units: str) -> str:
 
     def said(column: str) -> str:
         quantity = QUANTITIES[column]
-        unit = shown_unit(quantity, units).label
-        return f"{_cell(row, quantity, units)} {unit}".strip()
+        unit = shown_unit(quantity, display).label
+        return f"{_cell(row, quantity, display)} {unit}".strip()
 
     big = f"<b class=big>{escape(said('indicated_power_kW'))}</b>"
     if row["ideal_power_kW"] is None:
@@ -239,7 +241,7 @@ def _handling(one: RecordingResult) -> list[str]:
     return ["<h2>What was assumed or repaired</h2><ul>", *lines, "</ul>"]
 
 
-def _tables(one: RecordingResult, units: str) -> list[str]:
+def _tables(one: RecordingResult, display: Display) -> list[str]:
     rows = [row for row in one.ends if row["indicated_power_kW"] is not None]
     if not rows:
         return []
@@ -256,29 +258,29 @@ def _tables(one: RecordingResult, units: str) -> list[str]:
         for quantity in QUANTITIES.values():
             if quantity.group != group or all(row[quantity.column] is None for row in rows):
                 continue
-            cells = "".join(f"<td>{_cell(row, quantity, units)}</td>" for row in rows)
-            label = escape(_titled(quantity, units))
+            cells = "".join(f"<td>{_cell(row, quantity, display)}</td>" for row in rows)
+            label = escape(_titled(quantity, display))
             hint = escape(quantity.definition, quote=True)
             block.append(f'<tr><td title="{hint}">{label}</td>{cells}</tr>')
         if block:
             lines.append(f"<tr class=group><th colspan={len(rows) + 1}>{title}</th></tr>")
             lines += block
     lines.append("</tbody></table></div>")
-    return lines + _total_table(one.totals, units)
+    return lines + _total_table(one.totals, display)
 
 
-def _total_table(totals: Sequence[Row], units: str) -> list[str]:
+def _total_table(totals: Sequence[Row], display: Display) -> list[str]:
     shown = [
         quantity
         for quantity in TOTAL_QUANTITIES.values()
         if any(row[quantity.column] is not None for row in totals)
     ]
-    head = "".join(f"<th>{escape(_titled(one, units))}</th>" for one in shown)
+    head = "".join(f"<th>{escape(_titled(one, display))}</th>" for one in shown)
     lines = [
         f"<h2>Sums</h2><div class=scroll><table><thead><tr><th></th>{head}</tr></thead><tbody>"
     ]
     for row in totals:
-        cells = "".join(f"<td>{_cell(row, quantity, units)}</td>" for quantity in shown)
+        cells = "".join(f"<td>{_cell(row, quantity, display)}</td>" for quantity in shown)
         name = row["name"] if row["scope"] == "machine" else f"{row['scope']} {row['name']}"
         lines.append(f"<tr><td>{escape(name)}</td>{cells}</tr>")
     return [*lines, "</tbody></table></div>"]
