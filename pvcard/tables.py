@@ -217,18 +217,20 @@ class Display(NamedTuple):
     base_temperature: float = 288.15  # K
 
 
-def shown_unit(quantity: Quantity, display: Display) -> DisplayUnit:
+def shown_unit(quantity: Quantity, display: Display | str) -> DisplayUnit:
     """Unit in which a column is shown.
 
     Parameters
     ----------
     quantity : from the register
-    display : Display
+    display : Display, or "si" or "us" for standard flows at the default base state
 
     Returns
     -------
     DisplayUnit
     """
+    if isinstance(display, str):
+        display = Display(display)
     difference = quantity.column in _DIFFERENCES or "margin" in quantity.column
     system = "us" if display.units == "us" else "si"
     return display_unit(
